@@ -1,0 +1,1 @@
+"""The nouns every other folder speaks: parts, what a machine asks, what the program answers."""

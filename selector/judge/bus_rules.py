@@ -1,0 +1,171 @@
+"""The rules of the bus, the supply and the order, one function each."""
+
+from __future__ import annotations
+
+from ..physics import braking
+from .axis_rules import Findings, at_least, at_most, finding
+from .cases import BusCase
+
+
+def driver_voltage(bus: BusCase) -> Findings:
+    """The supply at its low end still feeds each driver; at its high end it keeps the margin."""
+    for case in bus.axes:
+        drives = case.driver.supply_voltage
+        yield at_least("lowest driver voltage", case.axis.axis, bus.lowest, drives.min, "V")
+        yield at_most(
+            "highest driver voltage", case.axis.axis, bus.highest,
+            bus.machine.margins.voltage_use * drives.max, "V",
+            note=f"{100 * bus.machine.margins.voltage_use:g} % of {drives.max:g} V",
+        )  # fmt: skip
+
+
+def set_voltage(bus: BusCase) -> Findings:
+    """The supply can be set to the bus voltage, and the machine allows it."""
+    unit, limits = bus.supply, bus.machine.limits.voltage
+    low, high = (unit.trim.min, unit.trim.max) if unit.trim else (unit.voltage, unit.voltage)
+    inside = low - 1e-9 <= bus.voltage <= high + 1e-9
+    span = f"{unit.part} gives {low:g} V" + (f" to {high:g} V" if high > low else "")
+    yield finding("set voltage", "bus", bus.voltage, None, "V", None,
+                  "passes" if inside else "fails", "stated", span)  # fmt: skip
+    if limits.min is not None:
+        yield at_least("lowest bus voltage", "bus", bus.voltage, limits.min, "V")
+    if limits.max is not None:
+        yield at_most("largest bus voltage", "bus", bus.voltage, limits.max, "V")
+    for load in bus.machine.loads:
+        yield at_least("load voltage, low end", load.load, bus.lowest, load.supply_voltage.min, "V")
+        yield at_most(
+            "load voltage, high end", load.load, bus.highest, load.supply_voltage.max, "V"
+        )
+
+
+def units_in_parallel(bus: BusCase) -> Findings:
+    """No more units share the load than the supply allows."""
+    if bus.count > 1:
+        yield at_most("units in parallel", "bus", bus.count, bus.supply.parallel, "1")
+
+
+def supply_power(bus: BusCase) -> Findings:
+    """Mean and peak power against the derated rating, with the supply margin."""
+    least = bus.machine.margins.supply
+    share = bus.derated_share
+    derated = f"rating times {100 * share:.0f} % at {bus.machine.ambient:g} degC"
+    standing = "guess"  # the iron and driver losses in the load are
+    for rule, load in (("supply, mean", bus.mean_power), ("supply, peak", bus.peak_power)):
+        yield at_most(rule, "bus", load, bus.available_power, "W", standing, derated, least)  # type: ignore[arg-type]
+
+
+def braking_rise(bus: BusCase) -> Findings:
+    """Emergency stop of all axes: the highest moment within the drivers' limit and the trip."""
+    energy, held = bus.returned_energy, bus.capacitance
+    unknown = [c.axis.axis for c in bus.axes if c.axis.load_inertia is None or (
+        c.motor.rotor_inertia is None)]  # fmt: skip
+    driven = [c.axis.axis for c in bus.axes
+              if c.axis.driving_torque > 0 and c.axis.stop_deceleration is None]  # fmt: skip
+    notes = []
+    if bus.supply.absorbs_energy:
+        notes.append("the supply takes energy back")
+    elif energy > 0:
+        notes.append(f"{energy:.3g} J into {held * 1e6:.0f} uF that can be counted on")
+    if unknown:
+        notes.append("inertia not stated: " + ", ".join(unknown))
+    if driven:
+        notes.append("stop_deceleration not stated although the load drives: " + ", ".join(driven))
+    for rule, limit in (("braking rise", bus.voltage_limit),
+                        ("overvoltage trip", bus.supply.overvoltage_trip)):  # fmt: skip
+        if limit is None:
+            yield finding(rule, "bus", bus.risen_voltage, None, "V", None, "unknown", "stated",
+                          f"{bus.supply.part} states no overvoltage_trip")  # fmt: skip
+            continue
+        note = "; ".join(notes)
+        if bus.risen_voltage > limit:
+            note += "; " + _needed(bus, limit)
+        found = at_most(rule, "bus", bus.risen_voltage, limit, "V", "simulated", note)
+        if found.state == "passes" and (unknown or driven):
+            found = found.model_copy(update={"state": "unknown"})
+        yield found
+
+
+def _needed(bus: BusCase, limit: float) -> str:
+    needed = braking.needed_capacitance(bus.highest, limit, bus.returned_energy)
+    if needed is None:
+        return "no capacitor helps: the limit lies below the supply's own voltage"
+    more = (needed - bus.capacitance) / braking.CAPACITOR_SHARE
+    return f"add bus_capacitance of {more * 1e6:.0f} uF at least"
+
+
+def startup_capacitance(bus: BusCase) -> Findings:
+    """The supply starts into the capacitors of drivers and bus."""
+    one = bus.supply.largest_startup_capacitance
+    silent = [c.driver.part for c in bus.axes if c.driver.bus_capacitance is None]
+    held = sum(c.driver.bus_capacitance or 0.0 for c in bus.axes) + bus.machine.bus_capacitance
+    if one is None:
+        yield finding("start-up capacitance", "bus", held, None, "F", None, "unknown", "stated",
+                      f"{bus.supply.part} states no largest_startup_capacitance")  # fmt: skip
+        return
+    found = at_most("start-up capacitance", "bus", held, bus.count * one, "F")
+    if silent and found.state == "passes":
+        note = "bus_capacitance not stated: " + ", ".join(dict.fromkeys(silent))
+        found = found.model_copy(update={"state": "unknown", "note": note})
+    yield found
+
+
+def steady_lowering(bus: BusCase) -> Findings:
+    """Power returned by loads that drive their motors, against what is surely consumed."""
+    returned = sum(case.lowering_power for case in bus.axes)
+    if returned <= 0.0 or bus.supply.absorbs_energy:
+        return
+    consumed = sum(case.driver.idle_power or 0.0 for case in bus.axes)
+    over = returned - consumed
+    note = "consumed for sure: the idle power that drivers state"
+    if over > 0:
+        limit = min(bus.voltage_limit, bus.supply.overvoltage_trip or bus.voltage_limit)
+        note += f"; a braking resistor of {limit**2 / over:.0f} ohm and {over:.0f} W would take it"
+    yield finding("steady lowering", "bus", returned, consumed, "W", None,
+                  "unknown" if over > 0 else "passes", "derived", note)  # fmt: skip
+
+
+def stock(bus: BusCase) -> Findings:
+    """Enough of each part for all machines, as far as stock is stated."""
+    for _, part, number in bus.parts.values():
+        needed = number * bus.machine.quantity
+        if part.stock is None:
+            yield finding("stock", part.part, needed, None, "1", None, "unknown", "stated",
+                          "stock not stated")  # fmt: skip
+        else:
+            yield at_most("stock", part.part, needed, part.stock, "1")
+
+
+def limits(bus: BusCase) -> Findings:
+    """Price, volume, mass and lead time of one machine within the user's limits."""
+    machine = bus.machine
+    rows = bus.parts.values()
+    sums = (
+        ("price", machine.limits.price and float(machine.limits.price.amount), machine.currency,
+         [None if p.price is None else float(p.price.amount) * n for _, p, n in rows]),
+        ("volume", machine.limits.volume, "m^3",
+         [None if p.outer_volume is None else p.outer_volume * n for _, p, n in rows]),
+        ("mass", machine.limits.mass, "kg",
+         [None if p.mass is None else p.mass * n for _, p, n in rows]),
+    )  # fmt: skip
+    for name, limit, unit, amounts in sums:
+        if limit is None:
+            continue
+        known = sum(amount for amount in amounts if amount is not None)
+        found = at_most(f"{name} limit", "machine", known, limit, unit)
+        if None in amounts and found.state == "passes":
+            found = found.model_copy(update={"state": "unknown", "note": "not stated by all parts"})
+        yield found
+    if machine.limits.lead_time is not None:
+        for _, part, _ in rows:
+            if part.lead_time is None:
+                yield finding("lead time", part.part, None, machine.limits.lead_time, "day", None,
+                              "unknown", "stated", "lead time not stated")  # fmt: skip
+            else:
+                yield at_most("lead time", part.part, part.lead_time, machine.limits.lead_time,
+                              "day")  # fmt: skip
+
+
+RULES = (
+    set_voltage, driver_voltage, units_in_parallel, supply_power, braking_rise,
+    startup_capacitance, steady_lowering, stock, limits,
+)  # fmt: skip

@@ -1,0 +1,428 @@
+"""What a design means: each axis and the bus with every figure the rules compare, in floats."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from typing import TypeVar
+
+from ..domain.machine import Axis, Machine, Point, Problem
+from ..domain.parts import AS_WOUND, DETENT_SHARE, RATED_RISE, Driver, Motor, Part, Supply
+from ..domain.results import AxisChoice, Design, joining_of
+from ..physics import braking, power, supply, thermal, torque
+
+SETTLED = 1e-9  # K
+T = TypeVar("T")
+
+
+@dataclass(frozen=True)
+class Judged:
+    """One point of an axis at one speed: what is asked and what is there."""
+
+    point: Point
+    speed: float
+    required: float
+    chain: torque.TorqueChain
+
+    @property
+    def headroom(self) -> float | None:
+        """Usable over required, minus 1; None where nothing is required."""
+        return float(self.chain.usable) / self.required - 1.0 if self.required > 0 else None
+
+
+@dataclass(frozen=True)
+class AxisCase:
+    """One axis of a design at its bus voltage."""
+
+    machine: Machine
+    axis: Axis
+    choice: AxisChoice
+    motor: Motor
+    driver: Driver
+    joining: str
+    voltage: float
+    spread: float
+
+    @cached_property
+    def joined(self) -> torque.Joined:
+        """The motor's figures as its windings are joined."""
+        m = self.motor
+        rated = (m.holding_torque, m.rated_current, m.phase_resistance, m.phase_inductance)
+        if self.joining == AS_WOUND or m.rated_as is None:
+            return torque.Joined(*rated)
+        return torque.joined(self.joining, m.rated_as, *rated)
+
+    @property
+    def K(self) -> float:
+        """Torque constant. [N·m/A]"""
+        return float(torque.torque_constant(self.joined.holding_torque, self.joined.rated_current))
+
+    @property
+    def N(self) -> int:
+        """Rotor teeth."""
+        return self.motor.rotor_teeth
+
+    @property
+    def inertia(self) -> float:
+        """Rotor and load, what is unknown counted as nothing. [kg·m²]"""
+        return (self.motor.rotor_inertia or 0.0) + (self.axis.load_inertia or 0.0)
+
+    @property
+    def detent(self) -> float:
+        """[N·m]"""
+        stated = self.motor.detent_torque
+        return DETENT_SHARE * self.joined.holding_torque if stated is None else stated
+
+    @property
+    def damping_ratio(self) -> float:
+        """[-]"""
+        stated = self.axis.damping_ratio
+        return self.driver.damping if stated is None else stated
+
+    def shaft_torque(self, point: Point) -> float:
+        """Torque the point asks of the motor, with the inertia's share; may be negative. [N·m]"""
+        return point.torque + self.inertia * point.acceleration
+
+    # -- rest and steps ---------------------------------------------------------------------
+
+    @property
+    def holding_needed(self) -> float:
+        """Torque to be held at rest, before margin. [N·m]"""
+        return self.axis.holding_torque or 0.0
+
+    @cached_property
+    def rest_share(self) -> float:
+        """Share of the setting at rest: as the design says, else the smallest that holds."""
+        if self.choice.rest_current_peak is not None:
+            return self.choice.rest_current_peak / self.choice.peak
+        if not self.axis.reduce_at_rest:
+            return 1.0
+        need = self.holding_needed * (1.0 + self.machine.margins.torque)
+        for share in self.driver.hold_shares:
+            if torque.standstill_torque(self.K, share * self.choice.peak) >= need:
+                return share
+        return 1.0
+
+    @property
+    def rest_current(self) -> float:
+        """[A]"""
+        return self.rest_share * self.choice.peak
+
+    @property
+    def step_limit(self) -> float | None:
+        """Lowest stated step rate of controller and driver. [Hz]"""
+        stated = (self.machine.limits.step_rate, self.driver.max_step_rate)
+        return min((rate for rate in stated if rate is not None), default=None)
+
+    @cached_property
+    def microsteps(self) -> int:
+        """As the design says, else the finest the step rates allow, else the coarsest fine one."""
+        if self.choice.microsteps is not None:
+            return self.choice.microsteps
+        fine = [n for n in sorted(self.driver.microsteps) if n >= 8]
+        limit = self.step_limit
+        fitting = [n for n in fine if limit is None or self.step_rate(n) <= limit]
+        return (fitting or fine[:1] or [max(self.driver.microsteps)])[-1]
+
+    def step_rate(self, microsteps: int) -> float:
+        """At top speed. [Hz]"""
+        return float(torque.step_rate(self.axis.top_speed, self.N, microsteps))
+
+    # -- heat -------------------------------------------------------------------------------
+
+    @property
+    def heat_limit(self) -> float:
+        """Highest winding temperature the insulation allows, less the margin. [°C]"""
+        limit = thermal.INSULATION_LIMITS[self.motor.insulation_class or "B"]
+        return limit - self.machine.margins.winding
+
+    def steady_temperature(self, iron: float) -> float:
+        """Winding temperature: of the duty, else the worst of each point and rest. [°C]"""
+        points = self.axis.points
+        if self.axis.has_duty:
+            shares = [(p.share or 0.0, p) for p in points]
+            return self._settled([*shares, (self.axis.rest_share, None)], iron)
+        return max(self._settled([(1.0, p)], iron) for p in (*points, None))
+
+    def _settled(self, scene: list[tuple[float, Point | None]], iron: float) -> float:
+        rise = RATED_RISE if self.motor.rated_rise is None else self.motor.rated_rise
+        to_air = self.axis.mounting_factor * float(
+            thermal.thermal_resistance(rise, self.joined.rated_current, self.joined.resistance)
+        )
+        temperature = self.machine.ambient
+        for _ in range(200):
+            before = temperature
+            copper, core = self._losses(scene, temperature, iron)
+            temperature = float(
+                thermal.steady_temperature(self.machine.ambient, to_air, copper, core)
+            )
+            if abs(temperature - before) < SETTLED:
+                break
+        return temperature
+
+    def _losses(
+        self, scene: list[tuple[float, Point | None]], temperature: float, iron: float
+    ) -> tuple[float, float]:
+        """Mean copper loss as if at 25 °C, and mean iron loss. [W]"""
+        copper = core = 0.0
+        J = self.joined
+        R = float(torque.winding_resistance(J.resistance, temperature))
+        R += self.driver.bridge_resistance
+        for share, point in scene:
+            if point is None:
+                copper += share * J.resistance * self.rest_current**2
+                continue
+            i_d, i_q = power.phase_currents(
+                point.speed, self.shaft_torque(point), self.voltage, self.choice.peak, R,
+                J.inductance, self.K, self.N,
+            )  # fmt: skip
+            copper += share * J.resistance * float(i_d**2 + i_q**2)
+            core += share * float(power.iron_loss(
+                point.speed, i_d, i_q, J.holding_torque, J.inductance, self.K, self.N, iron
+            ))  # fmt: skip
+        return copper, core
+
+    @cached_property
+    def temperature(self) -> float:
+        """Winding temperature that decides, and at which torque and power are taken. [°C]"""
+        return self.steady_temperature(power.IRON_LOSS_LOW)
+
+    @property
+    def motor_resistance(self) -> float:
+        """One winding, warm. [ohm]"""
+        return float(torque.winding_resistance(self.joined.resistance, self.temperature))
+
+    @property
+    def resistance(self) -> float:
+        """Warm winding with bridge. [ohm]"""
+        return self.motor_resistance + self.driver.bridge_resistance
+
+    # -- torque and power -------------------------------------------------------------------
+
+    def speeds(self, point: Point) -> list[float]:
+        """Speeds the point is judged at."""
+        I, R, L = self.choice.peak, self.resistance, self.joined.inductance
+        corner = torque.corner_speed(self.voltage, 0.0, I, R, L, self.K, self.N)
+        i_q = min(I, max(-I, self.shaft_torque(point) / self.K))
+        i_d = max(0.0, I * I - i_q * i_q) ** 0.5
+        top = power.SQUARE_WAVE * self.voltage
+        kink = torque.corner_speed(top, i_d, i_q, R, L, self.K, self.N)
+        return [
+            float(s)
+            for s in torque.judged_speeds(point.speed, point.from_rest, float(corner), float(kink))
+        ]
+
+    @cached_property
+    def judged(self) -> list[Judged]:
+        """Every point at every speed it is judged at."""
+        return [
+            Judged(p, speed, abs(self.shaft_torque(p)), self.chain(speed))
+            for p in self.axis.points
+            for speed in self.speeds(p)
+        ]
+
+    def chain(self, speed: float) -> torque.TorqueChain:
+        """Torque at a speed from nominal to usable."""
+        t = self.machine.tolerances
+        widths = torque.Tolerances(t.resistance, t.inductance, t.torque, self.spread)
+        return torque.torque_chain(
+            speed, self.voltage, self.choice.peak, self.motor_resistance,
+            self.driver.bridge_resistance, self.joined.inductance, self.K, self.N,
+            self.driver.regulator_time, self.detent, self.damping_ratio, self.microsteps, widths,
+            t.combine,
+        )  # fmt: skip
+
+    @property
+    def worst(self) -> Judged:
+        """Where the torque headroom is least; the fastest of equals."""
+
+        def key(j: Judged) -> tuple[float, float]:
+            headroom = float("inf") if j.headroom is None else round(j.headroom, 9)
+            return headroom, -j.speed
+
+        return min(self.judged, key=key)
+
+    def power_at(self, speed: float, point: Point) -> float:
+        """Bus power, with the iron loss the supply is sized for. [W]"""
+        J = self.joined
+        return float(power.bus_power(
+            speed, self.shaft_torque(point), self.voltage, self.choice.peak, self.resistance,
+            J.inductance, self.K, self.N, J.holding_torque, self.driver.idle,
+        ))  # fmt: skip
+
+    @property
+    def rest_power(self) -> float:
+        """[W]"""
+        return float(power.holding_power(
+            self.voltage, self.rest_current, self.resistance, self.driver.idle
+        ))  # fmt: skip
+
+    @cached_property
+    def peak_power(self) -> float:
+        """Largest bus power over the points, the way to them, and rest. [W]"""
+        return max([self.rest_power, *(self.power_at(j.speed, j.point) for j in self.judged)])
+
+    @cached_property
+    def mean_power(self) -> float:
+        """By the duty; without one the peak. [W]"""
+        if not self.axis.has_duty:
+            return self.peak_power
+        work = sum((p.share or 0.0) * max(0.0, self.power_at(p.speed, p)) for p in self.axis.points)
+        return work + self.axis.rest_share * self.rest_power
+
+    @property
+    def worst_power(self) -> float:
+        """What a jammed or overloaded axis could draw: a note, no rule. [W]"""
+        J, I, highest = self.joined, self.choice.peak, self.voltage * (1.0 + self.spread)
+        found = [self.rest_power]
+        for j in self.judged:
+            pullout = torque.pullout_torque(
+                j.speed, power.SQUARE_WAVE * highest, I, self.resistance, J.inductance, self.K,
+                self.N,
+            )  # fmt: skip
+            found.append(float(power.worst_power(
+                j.speed, self.shaft_torque(j.point), self.voltage, highest, I, self.resistance,
+                J.inductance, self.K, self.N, J.holding_torque, self.driver.idle, pullout,
+            )))  # fmt: skip
+        return max(found)
+
+    # -- braking ----------------------------------------------------------------------------
+
+    @property
+    def cold_resistance(self) -> float:
+        """Winding at 25 °C with bridge. [ohm]"""
+        return self.joined.resistance + self.driver.bridge_resistance
+
+    @property
+    def returned_energy(self) -> float:
+        """Of an emergency stop from top speed. [J]"""
+        top, slow = self.axis.top_speed, self.axis.stop_deceleration
+        if slow is None:
+            return float(braking.kinetic_energy(self.inertia, top))
+        brake = self.inertia * slow + self.axis.driving_torque
+        return float(braking.returned_energy(top, brake, slow, self.cold_resistance, self.K))
+
+    @property
+    def lowering_power(self) -> float:
+        """Largest power a steadily driven point returns. [W]"""
+        driven = [p for p in self.axis.points if p.torque < 0 and p.speed > 0]
+        return max([0.0, *(
+            float(braking.lowering_power(p.speed, -p.torque, self.cold_resistance, self.K))
+            for p in driven
+        )])  # fmt: skip
+
+
+@dataclass(frozen=True)
+class BusCase:
+    """The bus of a design with its axes."""
+
+    problem: Problem
+    design: Design
+    axes: tuple[AxisCase, ...]
+    supply: Supply
+    count: int
+    voltage: float
+
+    @classmethod
+    def of(cls, problem: Problem, design: Design) -> BusCase:
+        """The case of a design; KeyError names what the problem does not have."""
+        machine, catalogue = problem.machine, problem.catalogue
+        bus = design.buses[0]
+        unit = _found(catalogue.find("supplies", bus.supply), bus.supply)
+        choices = {choice.axis: choice for choice in design.axes}
+        cases = []
+        for axis in machine.axes:
+            choice = _found(choices.get(axis.axis), axis.axis)
+            motor = _found(catalogue.find("motors", choice.motor), choice.motor)
+            driver = _found(catalogue.find("drivers", choice.driver), choice.driver)
+            joining = _found(joining_of(choice, motor.ways), f"joining of {choice.axis}")
+            cases.append(AxisCase(
+                machine, axis, choice, motor, driver, joining, bus.voltage, unit.spread
+            ))  # fmt: skip
+        return cls(problem, design, tuple(cases), unit, bus.count, bus.voltage)
+
+    @property
+    def machine(self) -> Machine:
+        """[-]"""
+        return self.problem.machine
+
+    @property
+    def lowest(self) -> float:
+        """Bus voltage with the supply at its low end; cables are not counted. [V]"""
+        return self.voltage * (1.0 - self.supply.spread)
+
+    @property
+    def highest(self) -> float:
+        """Bus voltage with the supply at its high end. [V]"""
+        return self.voltage * (1.0 + self.supply.spread)
+
+    @property
+    def derated_share(self) -> float:
+        """Share of the supply's rating left at the ambient."""
+        steps = [(step.at, step.share) for step in self.supply.derating]
+        return supply.derated_share(self.machine.ambient, steps, self.supply.max_ambient)
+
+    @property
+    def available_power(self) -> float:
+        """Continuous power at the set voltage, derated, of all units. [W]"""
+        unit = self.supply
+        return float(supply.supply_power(
+            self.voltage, unit.power, unit.current, self.derated_share, self.count
+        ))  # fmt: skip
+
+    @cached_property
+    def mean_power(self) -> float:
+        """Of the axes by their duty, and the other loads. [W]"""
+        return sum(case.mean_power for case in self.axes) + self.machine.fixed_power
+
+    @cached_property
+    def peak_power(self) -> float:
+        """Of the worst stage: here every axis at its peak at once. [W]"""
+        return max(
+            sum(case.peak_power for case in self.axes if case.axis.axis in stage.axes)
+            for stage in self.machine.stages
+        ) + self.machine.fixed_power  # fmt: skip
+
+    @cached_property
+    def returned_energy(self) -> float:
+        """Of an emergency stop of all axes at once. [J]"""
+        return sum(case.returned_energy for case in self.axes)
+
+    @property
+    def capacitance(self) -> float:
+        """That can be counted on: stated capacitors less 20 %. [F]"""
+        held = sum(case.driver.bus_capacitance or 0.0 for case in self.axes)
+        held += self.count * (self.supply.output_capacitance or 0.0)
+        return braking.CAPACITOR_SHARE * (held + self.machine.bus_capacitance)
+
+    @property
+    def risen_voltage(self) -> float:
+        """Highest moment: after an emergency stop; infinite without any capacitor. [V]"""
+        if self.supply.absorbs_energy:
+            return self.highest
+        return float(braking.risen_voltage(self.highest, self.returned_energy, self.capacitance))
+
+    @property
+    def voltage_limit(self) -> float:
+        """What the highest moment must stay under for the drivers. [V]"""
+        use = self.machine.margins.voltage_use
+        return min(use * case.driver.supply_voltage.max for case in self.axes)
+
+    @cached_property
+    def parts(self) -> dict[str, tuple[str, Part, int]]:
+        """Each part used, with its kind and number in one machine, in order of use."""
+        used: dict[str, tuple[str, Part, int]] = {}
+        listed: list[tuple[str, Part, int]] = []
+        for case in self.axes:
+            listed += [("motor", case.motor, 1), ("driver", case.driver, 1)]
+        listed.append(("supply", self.supply, self.count))
+        for kind, part, number in sorted(listed, key=lambda row: row[0] == "supply"):
+            before = used.get(part.part, (kind, part, 0))[2]
+            used[part.part] = (kind, part, before + number)
+        return used
+
+
+def _found(value: T | None, name: str) -> T:
+    if value is None:
+        raise KeyError(name)
+    return value

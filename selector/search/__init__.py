@@ -1,0 +1,1 @@
+"""The choice: offers and options as arrays, dominance, the integer model and its solvers."""

@@ -1,0 +1,327 @@
+"""The integer model: options of the axes on each bus, feeds, and the rows that couple them.
+
+Each bus has its rail and the lowest driver limit it is to respect (a cell, see ``bounds``), so the
+energy a farad takes up is a number and every row is linear: CP-SAT, HiGHS and an exhaustive search
+can be given the same model. It is written over a set of buses; the search uses one so far.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from ..physics.braking import CAPACITOR_SHARE
+from .candidates import Options
+from .model import Model
+from .offers import (
+    AMOUNTS,
+    CAPACITANCE_SCALE,
+    ENERGY_SCALE,
+    MASS_SCALE,
+    MONEY_SCALE,
+    POWER_SCALE,
+    VOLUME_SCALE,
+    Feed,
+    Offers,
+    down,
+    up,
+)
+from .reduce import by_stock, undominated
+
+Array = Any
+SUPPLY, BRAKING, STOCK, STARTUP = (
+    "supply power", "braking rise", "stock", "start-up capacitance",
+)  # fmt: skip
+LIMITS = ("the price limit", "the volume limit", "the mass limit")
+RULES = (SUPPLY, BRAKING, STOCK, STARTUP, *LIMITS)
+UNLIMITED = 2**50
+
+
+@dataclass
+class Bus:
+    """What one bus may take: adequate options by axis, feeds of one rail, and its driver limit."""
+
+    options: list[Options]
+    feeds: list[Feed]
+    limit: float
+
+
+@dataclass
+class Choice:
+    """A design in the search's own terms: an option row per axis and a feed."""
+
+    options: list[Options]  # one row each
+    feed: Feed
+    values: list[int]  # of the goals, in steps
+
+    def order(self, offers: Offers) -> tuple[Any, ...]:
+        """Place among all designs: goals, trims, mean power, voltage, then names."""
+        t = offers.tables
+        power = sum(int(up(o.mean, POWER_SCALE)[0]) for o in self.options)
+        names = [
+            (int(t["winding_place"][o.winding[0]]), int(t["driver_place"][o.driver[0]]),
+             float(o.setting[0])) for o in self.options
+        ]  # fmt: skip
+        feed = self.feed
+        volts = offers.rails[feed.rail].voltage
+        return (*self.values, feed.trimmed, power, volts, names, feed.supply.part, feed.count)
+
+
+def feed_room(offers: Offers, feed: Feed, limit: float) -> float:
+    """Energy a farad takes up between the highest steady and the allowed voltage. [J/F]"""
+    trip = feed.supply.overvoltage_trip
+    allowed = limit if trip is None else min(limit, trip)
+    highest = offers.rails[feed.rail].highest
+    return max(0.0, 0.5 * CAPACITOR_SHARE * (allowed**2 - highest**2))
+
+
+def reduced_feeds(offers: Offers, feeds: list[Feed]) -> list[Feed]:
+    """The feeds of one rail that can matter, in canonical order."""
+    feeds = sorted(feeds, key=lambda f: (f.supply.part, f.count))
+    if not feeds:
+        return []
+    key = [[*(f.count * g.of(f.supply) for g in offers.goals), int(f.trimmed)] for f in feeds]
+    others = [_feed_figures(f) for f in feeds]
+    rows = undominated(np.array(key, dtype=np.int64), np.array(others, dtype=np.int64))
+    return [feeds[k] for k in rows]
+
+
+def _feed_figures(feed: Feed) -> list[int]:
+    """Everything a row sees of a feed, as integers of which smaller is better."""
+    supply = feed.supply
+    startup, trip = supply.largest_startup_capacitance, supply.overvoltage_trip
+    held = feed.count * (supply.output_capacitance or 0.0)
+    return [
+        *(feed.count * amount(supply) for amount in AMOUNTS),
+        -int(down(feed.power, POWER_SCALE)),
+        -int(down(held, CAPACITANCE_SCALE * 1000)),
+        -(UNLIMITED if trip is None else int(down(trip, 1000))),
+        -(UNLIMITED if startup is None else int(down(feed.count * startup, CAPACITANCE_SCALE))),
+        -int(supply.absorbs_energy),
+    ]
+
+
+def reduced_options(offers: Offers, options: Options, startup: bool) -> Options:
+    """The adequate options of an axis at one rail that can matter, in canonical order.
+
+    ``startup`` says whether a supply limits the capacitance it starts into. Limits of drivers are
+    those of the cell, so they need no comparing.
+    """
+    t = offers.tables
+    place = (
+        options.setting, t["driver_place"][options.driver], t["winding_place"][options.winding]
+    )  # fmt: skip
+    options = options.pick(np.lexsort(place))
+    goals = t["winding_goals"][options.winding] + t["driver_goals"][options.driver]
+    key = np.column_stack([goals, up(options.mean, POWER_SCALE)])
+    held = down(t["C"][options.driver], CAPACITANCE_SCALE * 1000)
+    others = np.column_stack([
+        t["winding_amounts"][options.winding] + t["driver_amounts"][options.driver],
+        up(options.peak, POWER_SCALE), up(options.energy, ENERGY_SCALE),
+        -held, held if startup else np.zeros_like(held),
+    ])  # fmt: skip
+    motor = t["motor"][options.winding]
+    stands_in = by_stock(motor, options.driver, t["ample_motor"], t["ample_driver"])
+    return options.pick(undominated(key, others, stands_in))
+
+
+class BusModel:
+    """The model of a set of buses; an axis is on one of them."""
+
+    def __init__(self, offers: Offers, buses: list[Bus]) -> None:
+        self.offers, self.machine, self.buses = offers, offers.problem.machine, buses
+        self.model = Model()
+        self.numbers: list[list[Array]] = [[] for _ in buses]  # by bus, then axis
+        for axis in range(len(self.machine.axes)):
+            group = self.model.add_group(sum(len(bus.options[axis]) for bus in buses))
+            start = 0
+            for mine, bus in zip(self.numbers, buses, strict=True):
+                end = start + len(bus.options[axis])
+                mine.append(np.array(group[start:end], dtype=np.int64))
+                start = end
+        self.feed_numbers = [self.model.add_group(len(bus.feeds)) for bus in buses]
+        self.complete = all(self.model.groups)
+        if self.complete:
+            for bus in range(len(buses)):
+                self._supply_rows(bus)
+                self._startup_row(bus)
+                self._braking_rows(bus)
+            self._stock_rows()
+            self._limit_rows()
+        self.goals = [self._goal(k) for k in range(len(offers.goals))]
+
+    def _over_axes(self, figure: Callable[[Options], Array], bus: int) -> dict[int, int]:
+        """Terms of one figure over the options of every axis on a bus."""
+        terms: dict[int, int] = {}
+        pairs = zip(self.numbers[bus], self.buses[bus].options, strict=True)
+        for numbers, options in pairs:
+            terms.update(zip(numbers.tolist(), figure(options).tolist(), strict=True))
+        return terms
+
+    def _over_feeds(self, figure: Callable[[Feed], int], bus: int) -> dict[int, int]:
+        pairs = zip(self.feed_numbers[bus], self.buses[bus].feeds, strict=True)
+        return {number: figure(feed) for number, feed in pairs}
+
+    def _over_all(
+        self, axes: Callable[[Options], Array], feeds: Callable[[Feed], int]
+    ) -> dict[int, int]:
+        terms: dict[int, int] = {}
+        for bus in range(len(self.buses)):
+            terms |= self._over_axes(axes, bus) | self._over_feeds(feeds, bus)
+        return terms
+
+    # -- rows -------------------------------------------------------------------------------
+
+    def _supply_rows(self, bus: int) -> None:
+        """Mean power, and the peak of each stage, within the derated rating less its margin."""
+        margin = 1.0 + self.machine.margins.supply
+        fixed = int(up(self.machine.fixed_power, POWER_SCALE))
+        gives = self._over_feeds(lambda f: -int(down(f.power / margin, POWER_SCALE)), bus)
+        mean = self._over_axes(lambda o: up(o.mean, POWER_SCALE), bus)
+        self.model.add_row(mean | gives, -fixed, None, SUPPLY)
+        names = [axis.axis for axis in self.machine.axes]
+        peak = self._over_axes(lambda o: up(o.peak, POWER_SCALE), bus)
+        for stage in self.machine.stages:
+            numbers = [self.numbers[bus][names.index(name)].tolist() for name in stage.axes]
+            working = {n: peak[n] for mine in numbers for n in mine}
+            self.model.add_row(working | gives, -fixed, None, SUPPLY)
+
+    def _startup_row(self, bus: int) -> None:
+        """Capacitance of drivers and bus within what the supply starts into, where stated."""
+        feeds = self.buses[bus].feeds
+        if all(f.supply.largest_startup_capacitance is None for f in feeds):
+            return
+        held = up(self.offers.tables["C"], CAPACITANCE_SCALE)
+        fixed = int(up(self.machine.bus_capacitance, CAPACITANCE_SCALE))
+        most = int(held.max(initial=0)) * len(self.machine.axes) + fixed
+
+        def allowed(feed: Feed) -> int:
+            one = feed.supply.largest_startup_capacitance
+            return -(most if one is None else int(down(feed.count * one, CAPACITANCE_SCALE)))
+
+        terms = self._over_axes(lambda o: held[o.driver], bus) | self._over_feeds(allowed, bus)
+        self.model.add_row(terms, -fixed, None, STARTUP)
+
+    def _braking_rows(self, bus: int) -> None:
+        """Energy of an emergency stop of all axes within what the capacitors take up.
+
+        A supply's trip below the drivers' limit leaves less room, for the drivers' capacitors
+        too; so one row for the feeds of each room, slack unless one of them is taken.
+        """
+        classes: dict[float, dict[int, Feed]] = {}
+        for number, feed in zip(self.feed_numbers[bus], self.buses[bus].feeds, strict=True):
+            if not feed.supply.absorbs_energy:
+                room = feed_room(self.offers, feed, self.buses[bus].limit)
+                classes.setdefault(room, {})[number] = feed
+        for room, feeds in classes.items():
+            own = down(room * self.offers.tables["C"], ENERGY_SCALE)
+            terms = self._over_axes(
+                lambda o, own=own: up(o.energy, ENERGY_SCALE) - own[o.driver], bus
+            )
+            most = sum(
+                max([0, *(terms[n] for n in numbers.tolist())]) for numbers in self.numbers[bus]
+            )
+            for number, feed in feeds.items():
+                held = feed.count * (feed.supply.output_capacitance or 0.0)
+                held += self.machine.bus_capacitance
+                terms[number] = most - int(down(room * held, ENERGY_SCALE))
+            self.model.add_row(terms, most, None, BRAKING)
+
+    def _stock_rows(self) -> None:
+        """Stock of each motor and driver over all buses, where it can run out."""
+        t, offers, quantity = self.offers.tables, self.offers, self.machine.quantity
+        motors = dict(zip(t["motor"].tolist(), (w.motor for w in offers.windings), strict=True))
+        for parts, number_of in (
+            (motors, lambda o: t["motor"][o.winding]),
+            (dict(enumerate(offers.drivers)), lambda o: o.driver),
+        ):
+            for number, part in parts.items():
+                stock = part.stock
+                if stock is None or stock >= quantity * len(self.machine.axes):
+                    continue
+                used: dict[int, int] = {}
+                for bus in range(len(self.buses)):
+                    used |= self._over_axes(
+                        lambda o, n=number, of=number_of: quantity * (of(o) == n), bus
+                    )
+                self.model.add_row(used, stock, None, STOCK)
+
+    def _limit_rows(self) -> None:
+        limits, t = self.machine.limits, self.offers.tables
+        price = None if limits.price is None else float(limits.price.amount)
+        bounds = ((price, MONEY_SCALE), (limits.volume, VOLUME_SCALE), (limits.mass, MASS_SCALE))
+        for k, (limit, scale) in enumerate(bounds):
+            if limit is not None:
+                motors, drivers = t["winding_amounts"][:, k], t["driver_amounts"][:, k]
+                terms = self._over_all(
+                    lambda o, m=motors, d=drivers: m[o.winding] + d[o.driver],
+                    lambda f, amount=AMOUNTS[k]: f.count * amount(f.supply),
+                )
+                self.model.add_row(terms, int(down(limit, scale)), None, LIMITS[k])
+
+    # -- goals and ties ---------------------------------------------------------------------
+
+    def _goal(self, k: int) -> dict[int, int]:
+        t, goal = self.offers.tables, self.offers.goals[k]
+        motors, drivers = t["winding_goals"][:, k], t["driver_goals"][:, k]
+        return self._over_all(
+            lambda o: motors[o.winding] + drivers[o.driver], lambda f: f.count * goal.of(f.supply)
+        )
+
+    def ties(self) -> Iterator[dict[int, int]]:
+        """What orders equals at one voltage: trims and mean power, then names, a few at a time."""
+        power: dict[int, int] = {}
+        feeds: dict[int, int] = {}
+        for bus in range(len(self.buses)):
+            power |= self._over_axes(lambda o: up(o.mean, POWER_SCALE), bus)
+            feeds |= self._over_feeds(lambda f: int(f.trimmed), bus)
+        most = sum(max(power[n] for n in group) for group in self.model.groups if group[0] in power)
+        yield power | {n: v * (most + 1) for n, v in feeds.items()}
+        yield from self._packed([*self._axis_names(), self._feed_names()])
+
+    def _axis_names(self) -> Iterator[dict[int, int]]:
+        t = self.offers.tables
+        for axis in range(len(self.machine.axes)):
+            numbers = np.concatenate([mine[axis] for mine in self.numbers])
+            o = Options.joined([bus.options[axis] for bus in self.buses])
+            table = np.column_stack(
+                [t["winding_place"][o.winding], t["driver_place"][o.driver], o.setting]
+            )
+            _, place = np.unique(table, axis=0, return_inverse=True)
+            yield dict(zip(numbers.tolist(), place.ravel().tolist(), strict=True))
+
+    def _feed_names(self) -> dict[int, int]:
+        keys = sorted({(f.supply.part, f.count) for bus in self.buses for f in bus.feeds})
+        terms: dict[int, int] = {}
+        for bus in range(len(self.buses)):
+            terms |= self._over_feeds(lambda f: keys.index((f.supply.part, f.count)), bus)
+        return terms
+
+    @staticmethod
+    def _packed(orders: list[dict[int, int]], most: int = 2**40) -> Iterator[dict[int, int]]:
+        """Several objectives in order as few: each weighs more than all those after it."""
+        packed: dict[int, int] = {}
+        span = 1
+        for order in orders:
+            size = max(order.values(), default=0) + 1
+            if span * size > most and packed:
+                yield packed
+                packed, span = {}, 1
+            packed = {n: v * size for n, v in packed.items()} | order
+            span *= size
+        yield packed
+
+    def choice(self, taken: tuple[int, ...]) -> Choice:
+        """The design behind a solution (of one bus)."""
+        rows = [
+            options.pick(np.flatnonzero(np.isin(numbers, taken)))
+            for numbers, options in zip(self.numbers[0], self.buses[0].options, strict=True)
+        ]
+        feed = self.buses[0].feeds[next(
+            k for k, n in enumerate(self.feed_numbers[0]) if n in set(taken)
+        )]  # fmt: skip
+        values = [sum(goal.get(n, 0) for n in taken) for goal in self.goals]
+        return Choice(rows, feed, values)

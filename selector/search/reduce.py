@@ -1,0 +1,79 @@
+"""Dominance: drops options and feeds that cannot matter, with the argument.
+
+An option p of an axis stands in for an option o of the same axis at the same rail when p is no
+worse in every figure that a row, a goal or a tie-break can see. Take any design with o and put p
+in its place. The voltage is the same, so the bus keeps its feed. Power, returned energy, price,
+volume and mass do not grow; the bus capacitance that takes up braking does not shrink (it is equal
+where a supply limits it); the driver's voltage limit does not fall. Stock is the one coupling that
+could break: p's motor (and driver) is either o's own, or in stock for every axis of every machine,
+so that no number of exchanges runs it out. And p comes strictly before o in the key that orders designs
+(goals, mean power, names): it is no worse in each figure of the key, and where all are equal its
+name comes first. So each exchange lowers the key, exchanging ends, and it ends at the very design
+the tie-break asks for. In a feed the same holds with trims in the key; only one bus takes feeds,
+and each feed's own stock was checked before, so nothing couples.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any
+
+import numpy as np
+
+Array = Any
+
+
+def undominated(
+    key: Array, others: Array, stands_in: Callable[[int, Array], Array] | None = None
+) -> Array:
+    """Rows that no other row stands in for.
+
+    Parameters
+    ----------
+    key : array, rows × figures
+        What orders designs, integers, smaller is better; rows of equal key go by their number,
+        so the caller gives them in order of name.
+    others : array, rows × figures
+        Everything else a row of the model sees, integers, smaller is better.
+    stands_in : function of (row, rows), optional
+        Which of ``rows`` may replace ``row`` as far as stock goes; all of them if not given.
+
+    Returns
+    -------
+    array
+        Indices of the rows kept, in rising order.
+    """
+    count = len(key)
+    order = np.lexsort((np.arange(count), *key.T[::-1]))
+    figures = np.hstack([key, others])
+    kept = np.zeros(count, dtype=np.int64)
+    table = np.empty_like(figures)
+    size = 0
+    for row in order:
+        better = kept[:size][(table[:size] <= figures[row]).all(axis=1)]
+        if len(better) and (stands_in is None or bool(stands_in(row, better).any())):
+            continue
+        kept[size], table[size] = row, figures[row]
+        size += 1
+    return np.sort(kept[:size])
+
+
+def by_stock(
+    motor: Array, driver: Array, ample_motor: Array, ample_driver: Array
+) -> Callable[[int, Array], Array]:
+    """The stock half of the argument, as ``stands_in`` for :func:`undominated`.
+
+    Parameters
+    ----------
+    motor, driver : arrays of rows
+        Which part each row uses.
+    ample_motor, ample_driver : boolean arrays over parts
+        Whether the part is in stock for every axis of every machine.
+    """
+
+    def stands_in(row: int, rows: Array) -> Array:
+        return (ample_motor[motor[rows]] | (motor[rows] == motor[row])) & (
+            ample_driver[driver[rows]] | (driver[rows] == driver[row])
+        )
+
+    return stands_in
