@@ -52,10 +52,13 @@ class AxisChoice(Record):
 
 
 class BusChoice(Record):
-    """Voltage and supply of one bus, and the axes on it (all of them when left out)."""
+    """Voltage and supply of one bus, and the axes on it (all of them when left out).
+
+    Without a supply the load is computed all the same, and what depends on one is unknown.
+    """
 
     voltage: Voltage
-    supply: Text
+    supply: Text | None = None
     count: Count = 1
     axes: tuple[Text, ...] = ()
 
@@ -76,13 +79,17 @@ class Quantity(Record):
 
 
 class Finding(Record):
-    """One checked rule. ``headroom`` is None where nothing is required of it."""
+    """One checked rule.
+
+    ``headroom`` is None where nothing is required; ``margin`` is the least headroom accepted.
+    """
 
     rule: str
     subject: str
     actual: Quantity | None = None
     limit: Quantity | None = None
     headroom: float | None = None
+    margin: float = 0.0
     state: State
     standing: Standing
     note: str = ""
@@ -136,7 +143,7 @@ class BusFigures(Record):
     mean_power: float
     peak_power: float
     worst_power: float
-    available_power: float
+    available_power: float | None
     supply_headroom: float | None
     highest_voltage: float | None
     voltage_limit: float
@@ -188,6 +195,7 @@ class Judgement(Record):
     currency: str
     assumptions: tuple[Remark, ...]
     cautions: tuple[str, ...]
+    changed: tuple[str, ...] = ()
 
     def to_frame(self) -> Any:
         """One row per finding, as a pandas frame."""
@@ -210,7 +218,7 @@ class Goal(Record):
     name: str
     value: float
     unit: str
-    proved_bound: float
+    proved_bound: float | None
 
 
 class Rejection(Record):
@@ -235,11 +243,12 @@ class Proof(Record):
     """How the program knows: what was searched, by which routes, and the gap left."""
 
     method: str
-    offered: int
+    pairs: int
+    voltages: tuple[float, ...]
+    options: int
     judged: int
     adequate: int
-    kept: int
-    voltages: tuple[float, ...]
+    solves: int
     exclusions: tuple[Exclusion, ...]
     gap: float | None
     second_route: str = ""
@@ -254,6 +263,7 @@ class NextSetting(Record):
     peak_power: float
     winding_temperature: float
     holds: bool
+    breaks: str = ""
 
 
 class Answer(Record):

@@ -28,19 +28,34 @@ def load_problem(path: str | Path) -> Problem:
         With every fault of every file, in order of file and place.
     """
     faults: list[Fault] = []
-    machine, source = read_record(Path(path), str(path), Machine, faults)
-    if machine is None or source is None:
+    node, source = read_node(Path(path), str(path), faults)
+    if node is None or source is None:
         raise InputFaults(faults)
-    folder = Path(path).parent
+    machine = build(Machine, node, node.plain(), (), str(path), faults)
     files: list[Path] = []
-    for name in machine.catalogues:
-        files += catalogue_files(folder / name, faults)
+    for name, place in _catalogue_names(node):
+        found = catalogue_files(Path(path).parent / name, faults)
+        if not found[:1] or found[0].exists():
+            files += found
+        else:
+            near = catalogue_files(Path(path).parent / name, [])[0]
+            faults.append(Fault(str(path), *place, "missing-file", f"catalogues: {name}",
+                                "a catalogue file or folder", f"nothing at {near}"))  # fmt: skip
     catalogue, sources = _read_catalogue(files, faults)
-    if faults:
+    if faults or machine is None:
         raise InputFaults(faults)
     return Problem(
         machine=machine, catalogue=catalogue, machine_file=str(path), sources=(source, *sources)
     )
+
+
+def _catalogue_names(root: Node) -> list[tuple[str, tuple[int, int]]]:
+    """Catalogues a machine file names, with their places, even if other keys are faulty."""
+    node = root.value.get("catalogues")
+    if node is None:
+        return []
+    listed = node.value if isinstance(node.value, list) else [node]
+    return [(n.value, (n.line, n.column)) for n in listed if isinstance(n.value, str) and n.value]
 
 
 def load_catalogue(path: str | Path) -> Catalogue:

@@ -14,7 +14,7 @@ Findings = Iterator[Finding]
 
 def finding(
     rule: str, subject: str, actual: float | None, limit: float | None, unit: str,
-    headroom: float | None, state: State, standing: Standing, note: str = "",
+    headroom: float | None, state: State, standing: Standing, note: str = "", margin: float = 0.0,
 ) -> Finding:  # fmt: skip
     """A finding with its figures in one unit; figures that are not finite are left out."""
 
@@ -27,7 +27,7 @@ def finding(
         headroom = None
     return Finding(
         rule=rule, subject=subject, actual=quantity(actual), limit=quantity(limit),
-        headroom=headroom, state=state, standing=standing, note=note,
+        headroom=headroom, margin=margin, state=state, standing=standing, note=note,
     )  # fmt: skip
 
 
@@ -41,7 +41,7 @@ def at_most(
     if actual <= 0 and limit < 0:
         passes = False
     state: State = "passes" if passes else "fails"
-    return finding(rule, subject, actual, limit, unit, headroom, state, standing, note)
+    return finding(rule, subject, actual, limit, unit, headroom, state, standing, note, least)
 
 
 def at_least(
@@ -52,7 +52,7 @@ def at_least(
     headroom = actual / limit - 1.0 if limit > 0 else None
     passes = headroom is None or headroom >= least - CLOSE
     state: State = "passes" if passes else "fails"
-    return finding(rule, subject, actual, limit, unit, headroom, state, standing, note)
+    return finding(rule, subject, actual, limit, unit, headroom, state, standing, note, least)
 
 
 def frame(case: AxisCase) -> Findings:
@@ -102,9 +102,12 @@ def rest_current(case: AxisCase) -> Findings:
 
 
 def rest_share(case: AxisCase) -> Findings:
-    """The driver has the share of current at rest that the design asks for."""
+    """The driver has the share of current at rest that the design asks for, and the axis allows."""
     if case.choice.rest_current_peak is None:
         return
+    if case.rest_share < 1.0 - 1e-6 and not case.axis.reduce_at_rest:
+        yield finding("reduced at rest", case.axis.axis, case.rest_share, None, "1", None, "fails",
+                      "stated", "the axis does not say reduce_at_rest: yes")  # fmt: skip
     shares = case.driver.hold_shares
     has = any(abs(share - case.rest_share) < 1e-6 for share in shares)
     offered = ", ".join(f"{100 * s:g} %" for s in shares)

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+from ..domain.results import State
 from ..physics import braking
 from .axis_rules import Findings, at_least, at_most, finding
 from .cases import BusCase
+
+NONE = "no supply is named"
 
 
 def driver_voltage(bus: BusCase) -> Findings:
@@ -22,11 +25,14 @@ def driver_voltage(bus: BusCase) -> Findings:
 def set_voltage(bus: BusCase) -> Findings:
     """The supply can be set to the bus voltage, and the machine allows it."""
     unit, limits = bus.supply, bus.machine.limits.voltage
-    low, high = (unit.trim.min, unit.trim.max) if unit.trim else (unit.voltage, unit.voltage)
-    inside = low - 1e-9 <= bus.voltage <= high + 1e-9
-    span = f"{unit.part} gives {low:g} V" + (f" to {high:g} V" if high > low else "")
-    yield finding("set voltage", "bus", bus.voltage, None, "V", None,
-                  "passes" if inside else "fails", "stated", span)  # fmt: skip
+    if unit is None:
+        yield finding("set voltage", "bus", bus.voltage, None, "V", None, "unknown", "stated", NONE)
+    else:
+        low, high = (unit.trim.min, unit.trim.max) if unit.trim else (unit.voltage, unit.voltage)
+        inside = low - 1e-9 <= bus.voltage <= high + 1e-9
+        span = f"{unit.part} gives {low:g} V" + (f" to {high:g} V" if high > low else "")
+        state: State = "passes" if inside else "fails"
+        yield finding("set voltage", "bus", bus.voltage, None, "V", None, state, "stated", span)
     if limits.min is not None:
         yield at_least("lowest bus voltage", "bus", bus.voltage, limits.min, "V")
     if limits.max is not None:
@@ -40,18 +46,22 @@ def set_voltage(bus: BusCase) -> Findings:
 
 def units_in_parallel(bus: BusCase) -> Findings:
     """No more units share the load than the supply allows."""
-    if bus.count > 1:
+    if bus.count > 1 and bus.supply is not None:
         yield at_most("units in parallel", "bus", bus.count, bus.supply.parallel, "1")
 
 
 def supply_power(bus: BusCase) -> Findings:
     """Mean and peak power against the derated rating, with the supply margin."""
-    least = bus.machine.margins.supply
-    share = bus.derated_share
-    derated = f"rating times {100 * share:.0f} % at {bus.machine.ambient:g} degC"
-    standing = "guess"  # the iron and driver losses in the load are
-    for rule, load in (("supply, mean", bus.mean_power), ("supply, peak", bus.peak_power)):
-        yield at_most(rule, "bus", load, bus.available_power, "W", standing, derated, least)  # type: ignore[arg-type]
+    least, available = bus.machine.margins.supply, bus.available_power
+    derated = f"rating times {100 * bus.derated_share:.0f} % at {bus.machine.ambient:g} degC"
+    for rule, load in (
+        ("supply mean power", bus.mean_power),
+        ("supply peak power", bus.peak_power),
+    ):
+        if available is None:
+            yield finding(rule, "bus", load, None, "W", None, "unknown", "guess", NONE)
+        else:  # a guess, because the iron and driver losses in the load are
+            yield at_most(rule, "bus", load, available, "W", "guess", derated, least)
 
 
 def braking_rise(bus: BusCase) -> Findings:
@@ -62,7 +72,7 @@ def braking_rise(bus: BusCase) -> Findings:
     driven = [c.axis.axis for c in bus.axes
               if c.axis.driving_torque > 0 and c.axis.stop_deceleration is None]  # fmt: skip
     notes = []
-    if bus.supply.absorbs_energy:
+    if bus.absorbs_energy:
         notes.append("the supply takes energy back")
     elif energy > 0:
         notes.append(f"{energy:.3g} J into {held * 1e6:.0f} uF that can be counted on")
@@ -71,10 +81,10 @@ def braking_rise(bus: BusCase) -> Findings:
     if driven:
         notes.append("stop_deceleration not stated although the load drives: " + ", ".join(driven))
     for rule, limit in (("braking rise", bus.voltage_limit),
-                        ("overvoltage trip", bus.supply.overvoltage_trip)):  # fmt: skip
+                        ("overvoltage trip", bus.trip)):  # fmt: skip
         if limit is None:
             yield finding(rule, "bus", bus.risen_voltage, None, "V", None, "unknown", "stated",
-                          f"{bus.supply.part} states no overvoltage_trip")  # fmt: skip
+                          "overvoltage_trip of the supply not stated")  # fmt: skip
             continue
         note = "; ".join(notes)
         if bus.risen_voltage > limit:
@@ -95,12 +105,12 @@ def _needed(bus: BusCase, limit: float) -> str:
 
 def startup_capacitance(bus: BusCase) -> Findings:
     """The supply starts into the capacitors of drivers and bus."""
-    one = bus.supply.largest_startup_capacitance
+    one = None if bus.supply is None else bus.supply.largest_startup_capacitance
     silent = [c.driver.part for c in bus.axes if c.driver.bus_capacitance is None]
     held = sum(c.driver.bus_capacitance or 0.0 for c in bus.axes) + bus.machine.bus_capacitance
     if one is None:
         yield finding("start-up capacitance", "bus", held, None, "F", None, "unknown", "stated",
-                      f"{bus.supply.part} states no largest_startup_capacitance")  # fmt: skip
+                      "largest_startup_capacitance of the supply not stated")  # fmt: skip
         return
     found = at_most("start-up capacitance", "bus", held, bus.count * one, "F")
     if silent and found.state == "passes":
@@ -112,13 +122,13 @@ def startup_capacitance(bus: BusCase) -> Findings:
 def steady_lowering(bus: BusCase) -> Findings:
     """Power returned by loads that drive their motors, against what is surely consumed."""
     returned = sum(case.lowering_power for case in bus.axes)
-    if returned <= 0.0 or bus.supply.absorbs_energy:
+    if returned <= 0.0 or bus.absorbs_energy:
         return
     consumed = sum(case.driver.idle_power or 0.0 for case in bus.axes)
     over = returned - consumed
     note = "consumed for sure: the idle power that drivers state"
     if over > 0:
-        limit = min(bus.voltage_limit, bus.supply.overvoltage_trip or bus.voltage_limit)
+        limit = min(bus.voltage_limit, bus.trip or bus.voltage_limit)
         note += f"; a braking resistor of {limit**2 / over:.0f} ohm and {over:.0f} W would take it"
     yield finding("steady lowering", "bus", returned, consumed, "W", None,
                   "unknown" if over > 0 else "passes", "derived", note)  # fmt: skip

@@ -7,7 +7,16 @@ from functools import cached_property
 from typing import TypeVar
 
 from ..domain.machine import Axis, Machine, Point, Problem
-from ..domain.parts import AS_WOUND, DETENT_SHARE, RATED_RISE, Driver, Motor, Part, Supply
+from ..domain.parts import (
+    AS_WOUND,
+    DETENT_SHARE,
+    RATED_RISE,
+    SUPPLY_TOLERANCE,
+    Driver,
+    Motor,
+    Part,
+    Supply,
+)
 from ..domain.results import AxisChoice, Design, joining_of
 from ..physics import braking, power, supply, thermal, torque
 
@@ -319,7 +328,7 @@ class BusCase:
     problem: Problem
     design: Design
     axes: tuple[AxisCase, ...]
-    supply: Supply
+    supply: Supply | None
     count: int
     voltage: float
 
@@ -328,7 +337,10 @@ class BusCase:
         """The case of a design; KeyError names what the problem does not have."""
         machine, catalogue = problem.machine, problem.catalogue
         bus = design.buses[0]
-        unit = _found(catalogue.find("supplies", bus.supply), bus.supply)
+        unit = None
+        if bus.supply is not None:
+            unit = _found(catalogue.find("supplies", bus.supply), bus.supply)
+        spread = SUPPLY_TOLERANCE if unit is None else unit.spread
         choices = {choice.axis: choice for choice in design.axes}
         cases = []
         for axis in machine.axes:
@@ -337,7 +349,7 @@ class BusCase:
             driver = _found(catalogue.find("drivers", choice.driver), choice.driver)
             joining = _found(joining_of(choice, motor.ways), f"joining of {choice.axis}")
             cases.append(AxisCase(
-                machine, axis, choice, motor, driver, joining, bus.voltage, unit.spread
+                machine, axis, choice, motor, driver, joining, bus.voltage, spread
             ))  # fmt: skip
         return cls(problem, design, tuple(cases), unit, bus.count, bus.voltage)
 
@@ -347,28 +359,49 @@ class BusCase:
         return self.problem.machine
 
     @property
+    def spread(self) -> float:
+        """Half-width of the supply's voltage as a share."""
+        return SUPPLY_TOLERANCE if self.supply is None else self.supply.spread
+
+    @property
+    def absorbs_energy(self) -> bool:
+        """Whether the supply takes energy back."""
+        return self.supply is not None and self.supply.absorbs_energy
+
+    @property
+    def trip(self) -> float | None:
+        """Voltage at which the supply switches itself off, if stated. [V]"""
+        return None if self.supply is None else self.supply.overvoltage_trip
+
+    @property
     def lowest(self) -> float:
         """Bus voltage with the supply at its low end; cables are not counted. [V]"""
-        return self.voltage * (1.0 - self.supply.spread)
+        return self.voltage * (1.0 - self.spread)
 
     @property
     def highest(self) -> float:
         """Bus voltage with the supply at its high end. [V]"""
-        return self.voltage * (1.0 + self.supply.spread)
+        return self.voltage * (1.0 + self.spread)
 
     @property
     def derated_share(self) -> float:
-        """Share of the supply's rating left at the ambient."""
+        """Share of the supply's rating left at the ambient; 0 without a supply."""
+        if self.supply is None:
+            return 0.0
         steps = [(step.at, step.share) for step in self.supply.derating]
         return supply.derated_share(self.machine.ambient, steps, self.supply.max_ambient)
 
     @property
-    def available_power(self) -> float:
-        """Continuous power at the set voltage, derated, of all units. [W]"""
+    def available_power(self) -> float | None:
+        """Continuous power at the set voltage, derated, of all units; None without any. [W]"""
         unit = self.supply
-        return float(supply.supply_power(
-            self.voltage, unit.power, unit.current, self.derated_share, self.count
-        ))  # fmt: skip
+        if unit is None:
+            return None
+        return float(
+            supply.supply_power(
+                self.voltage, unit.power, unit.current, self.derated_share, self.count
+            )
+        )
 
     @cached_property
     def mean_power(self) -> float:
@@ -392,13 +425,14 @@ class BusCase:
     def capacitance(self) -> float:
         """That can be counted on: stated capacitors less 20 %. [F]"""
         held = sum(case.driver.bus_capacitance or 0.0 for case in self.axes)
-        held += self.count * (self.supply.output_capacitance or 0.0)
+        if self.supply is not None:
+            held += self.count * (self.supply.output_capacitance or 0.0)
         return braking.CAPACITOR_SHARE * (held + self.machine.bus_capacitance)
 
     @property
     def risen_voltage(self) -> float:
         """Highest moment: after an emergency stop; infinite without any capacitor. [V]"""
-        if self.supply.absorbs_energy:
+        if self.absorbs_energy:
             return self.highest
         return float(braking.risen_voltage(self.highest, self.returned_energy, self.capacitance))
 
@@ -415,8 +449,11 @@ class BusCase:
         listed: list[tuple[str, Part, int]] = []
         for case in self.axes:
             listed += [("motor", case.motor, 1), ("driver", case.driver, 1)]
-        listed.append(("supply", self.supply, self.count))
-        for kind, part, number in sorted(listed, key=lambda row: row[0] == "supply"):
+        if self.supply is not None:
+            listed.append(("supply", self.supply, self.count))
+        for kind, part, number in sorted(
+            listed, key=lambda row: ("motor", "driver", "supply").index(row[0])
+        ):
             before = used.get(part.part, (kind, part, 0))[2]
             used[part.part] = (kind, part, before + number)
         return used

@@ -89,14 +89,16 @@ def _inertia_ratio(case: AxisCase) -> float | None:
 def bus_figures(bus: BusCase) -> BusFigures:
     """What was computed about the bus."""
     rated = [case.joined.rated_current for case in bus.axes]
-    risen = bus.risen_voltage
-    limit = min(bus.voltage_limit, bus.supply.overvoltage_trip or bus.voltage_limit)
+    risen, available = bus.risen_voltage, bus.available_power
+    limit = min(bus.voltage_limit, bus.trip or bus.voltage_limit)
     return BusFigures(
         mean_power=bus.mean_power,
         peak_power=bus.peak_power,
         worst_power=sum(case.worst_power for case in bus.axes) + bus.machine.fixed_power,
-        available_power=bus.available_power,
-        supply_headroom=bus.available_power / bus.peak_power - 1.0 if bus.peak_power > 0 else None,
+        available_power=available,
+        supply_headroom=available / bus.peak_power - 1.0
+        if available is not None and bus.peak_power > 0
+        else None,
         highest_voltage=risen if risen < float("inf") else None,
         voltage_limit=limit,
         returned_energy=bus.returned_energy,

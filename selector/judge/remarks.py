@@ -35,7 +35,7 @@ def _of_the_machine(bus: BusCase) -> Iterator[tuple[str, str]]:
     yield (f"Ambient {machine.ambient:g} degC around motors, drivers and supply.", "stated"
            if "ambient" in machine.model_fields_set else "practice")  # fmt: skip
     yield (f"Tolerances: resistance ±{100 * t.resistance:g} %, inductance ±{100 * t.inductance:g} "
-           f"%, torque ±{100 * t.torque:g} %, supply ±{100 * bus.supply.spread:g} %; {how}.",
+           f"%, torque ±{100 * t.torque:g} %, supply ±{100 * bus.spread:g} %; {how}.",
            "practice")  # fmt: skip
     if len(bus.axes) > 1:
         yield "All axes work at once, each at its largest power (no cycle is stated).", "practice"
@@ -98,6 +98,9 @@ def _of_the_drivers(bus: BusCase) -> Iterator[tuple[str, str]]:
 
 def _of_the_supply(bus: BusCase) -> Iterator[tuple[str, str]]:
     unit = bus.supply
+    if unit is None:
+        yield f"Output tolerance {100 * defaults.SUPPLY_TOLERANCE:g} %, no supply named.", "guess"
+        return
     if unit.tolerance is None:
         yield f"Output tolerance {100 * defaults.SUPPLY_TOLERANCE:g} %: {unit.part}.", "guess"
     if not unit.derating:
@@ -118,34 +121,46 @@ def cautions(bus: BusCase) -> tuple[str, ...]:
 
 
 def _about_axes(bus: BusCase) -> Iterator[str]:
+    """What a rule does not forbid but the user should know, one line for all axes it is true of."""
+    lossy: list[str] = []
+    hot, rough, heavy, strong, fast = (list[str]() for _ in range(5))
     for case in bus.axes:
         name, worst = case.axis.axis, case.worst
-        usable = float(worst.chain.usable)
-        allowed = usable / (1.0 + bus.machine.margins.torque)
+        allowed = float(worst.chain.usable) / (1.0 + bus.machine.margins.torque)
         if allowed > 0 and float(worst.chain.nominal) / allowed > STRONG_CHAIN:
-            yield (f"{name}: ideal torque is {float(worst.chain.nominal) / allowed:.1f} times what "
-                   "is allowed; a measured torque curve would free some of it.")  # fmt: skip
+            strong.append(f"{name} {float(worst.chain.nominal) / allowed:.1f}")
         high = case.steady_temperature(power.IRON_LOSS_HIGH)
         if high > case.heat_limit >= case.temperature:
-            yield (f"{name}: the winding could reach {high:.0f} degC, above its limit of "
-                   f"{case.heat_limit:.0f} degC, if the iron is lossy: measure it.")  # fmt: skip
-        ripple = case.voltage * 20e-6 / (case.joined.inductance * case.choice.peak)
-        if ripple > COARSE_RIPPLE:
-            yield (f"{name}: current ripple is large for this winding at {case.voltage:g} V; "
-                   "torque is safe, the power figure is not.")  # fmt: skip
+            shown = "no end" if high >= thermal.RUNAWAY else f"{high:.0f} degC"
+            lossy.append(f"{name} {shown} (limit {case.heat_limit:.0f})")
+        case_heat = float(thermal.case_temperature(case.machine.ambient, case.temperature))
+        if case_heat > HOT_CASE:
+            hot.append(f"{name} {case_heat:.0f} degC")
+        if case.voltage * 20e-6 / (case.joined.inductance * case.choice.peak) > COARSE_RIPPLE:
+            rough.append(name)
         rotor, load = case.motor.rotor_inertia, case.axis.load_inertia
         if rotor and load is not None and load / rotor > HEAVY_LOAD:
-            yield (f"{name}: load inertia is {load / rotor:.0f} times the rotor's; above "
-                   f"{HEAVY_LOAD:g} expect ringing and lost steps in sharp moves.")  # fmt: skip
-        if case.axis.vertical:
-            yield (f"{name} is vertical and falls when power goes: it needs a brake, a "
-                   "counterweight or a screw that does not run back. Keep clear of it.")  # fmt: skip
+            heavy.append(f"{name} {load / rotor:.0f}")
         if case.K * case.axis.top_speed > case.voltage:
-            yield (f"{name}: turned at top speed with its driver off the motor makes "
-                   f"{case.K * case.axis.top_speed:.0f} V and feeds the bus.")  # fmt: skip
-        shown = float(thermal.case_temperature(case.machine.ambient, case.temperature))
-        if shown > HOT_CASE:
-            yield f"{name}: the motor's case may reach {shown:.0f} degC: guard against touch."
+            fast.append(f"{name} {case.K * case.axis.top_speed:.0f} V")
+    for found, text in (
+        (lossy, "The winding could get too hot if the iron is as lossy as its band allows; measure "
+                "it: {}."),
+        (hot, "Motor cases get hot, guard against touch: {}."),
+        (heavy, "Load inertia over rotor inertia is above 10; expect ringing and lost steps in "
+                "sharp moves: {}."),
+        (strong, "Ideal torque is more than 3 times what is allowed; a measured torque curve would "
+                 "free some of it: {}."),
+        (rough, "Current ripple is large for these windings; torque is safe, the power figure is "
+                "not: {}."),
+        (fast, "Turned at top speed with its driver off a motor feeds the bus: {}."),
+    ):  # fmt: skip
+        if found:
+            yield text.format(", ".join(found))
+    vertical = [case.axis.axis for case in bus.axes if case.axis.vertical]
+    if vertical:
+        yield ("Falls when power goes, unless a brake, a counterweight or a screw that does not "
+               f"run back holds it; keep clear: {', '.join(vertical)}.")  # fmt: skip
 
 
 def _about_the_machine(bus: BusCase) -> Iterator[str]:

@@ -29,7 +29,7 @@ from .offers import Offers
 Array = Any
 WATT_PRICES = (0.0, 0.5, 1.0, 2.0)  # of the median goal per watt of the feeds
 JOULE_PRICES = (0.0, 0.15, 0.5, 1.5)  # of the median goal of the feeds per usual energy
-NONE = np.inf
+NONE, HUGE = np.inf, 1e30
 
 
 @dataclass
@@ -102,20 +102,13 @@ class Bounds:
 
     def _axis_floors(self, table: AxisTable, rail: int, watt: Array, joule: Array) -> Array:
         """Least sum of an axis at a rail: prices × levels."""
-        o, held = table.at_rail[rail], self.offers.tables["C"]
-        least = np.full((len(watt), len(held)), NONE)  # prices × drivers
-        goal, energy = self.pair_goal[o.winding, o.driver], table.energy[o.winding, o.driver]
-        sums = goal + watt[:, None] * o.peak + joule[:, None] * energy
-        np.minimum.at(least, (slice(None), o.driver), sums)
-        waiting = table.possible & table.reaches[:, :, rail] & ~table.judged[:, :, rail]
-        if waiting.any():
-            w, d = np.nonzero(waiting)
-            sums = self.pair_goal[w, d] + watt[:, None] * table.power_floor[w, d]
-            sums = sums + joule[:, None] * table.energy[w, d]
-            np.minimum.at(least, (slice(None), d), sums)
-        own = joule[:, None, None] * self.room[rail][:, None] * held  # prices × levels × drivers
-        sums = np.where(self.allowed, least[:, None, :] - own, NONE)
-        return sums.min(axis=2, initial=NONE)
+        power, prices = table.power[:, :, rail], (len(watt), 1, 1)
+        sums = self.pair_goal + watt.reshape(prices) * np.minimum(power, HUGE)
+        sums = sums + joule.reshape(prices) * table.energy
+        least = np.where(np.isfinite(power), sums, NONE).min(axis=1, initial=NONE)
+        room = self.room[rail][:, None] * self.offers.tables["C"]  # levels × drivers
+        sums = least[:, None, :] - joule.reshape(prices) * room
+        return np.where(self.allowed, sums, NONE).min(axis=2, initial=NONE)
 
     def _left(self, cell: CellBound, least: float, ceiling: float) -> float:
         """What one axis or feed may take when all the others take their least."""

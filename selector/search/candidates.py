@@ -3,8 +3,9 @@
 For one pair of motor and driver at one voltage the settings are tried from the smallest that
 could do upwards, and the first adequate one is kept: with the same parts a larger setting never
 takes less power at any demand point nor runs cooler (the current vector is at least as long), and
-nothing else a limit or goal sees depends on it. Only an axis that lowers its current at rest needs
-all of them, because a larger setting may then allow a smaller share at rest. For the same reason
+nothing else a limit or goal sees depends on it. Only an axis that lowers its current at rest goes
+on until its share at rest is the driver's smallest, because a larger setting may then allow a
+smaller share. For the same reason
 a setting that runs too hot ends the row.
 """
 
@@ -103,11 +104,15 @@ class AxisTable:
     microsteps: Array = field(init=False)  # winding × driver
     possible: Array = field(init=False)  # winding × driver: passes what no voltage can change
     first_rank: Array = field(init=False)  # winding × driver: of the first strong setting
+    least_share: Array = field(init=False)  # by driver: of the setting that may flow at rest
     power_floor: Array = field(init=False)  # winding × driver [W]
     energy: Array = field(init=False)  # winding × driver: returned by a stop from top speed [J]
     reaches: Array = field(init=False)  # winding × driver × rail: could reach every point
     judged: Array = field(init=False)  # winding × driver × rail
     at_rail: dict[int, Options] = field(init=False)  # adequate options by rail
+    # Least power of a pair at a rail: a floor until it is judged, then that of its adequate options,
+    # infinite where there are none.
+    power: Array = field(init=False)
     misses: dict[str, Miss] = field(init=False)
     tried: int = 0
 
@@ -131,6 +136,8 @@ class AxisTable:
         self.possible = self._possible(shape)
         self._weigh_pairs()
         self.judged = np.zeros((*shape, len(self.offers.rails)), dtype=bool)
+        fits = self.reaches & self.possible[:, :, None]
+        self.power = np.where(fits, self.power_floor[:, :, None], np.inf)
 
     def _possible(self, shape: tuple[int, int]) -> Array:
         """Pairs that pass the rules no voltage or setting can change."""
@@ -187,10 +194,10 @@ class AxisTable:
             self._note_weak(weak, least)
         self.possible &= ~weak
         cold = torque.winding_resistance(tables["R_25"], machine.ambient)[:, None] + tables["R_b"]
-        share = np.ones(len(self.settings))
+        self.least_share = np.ones(len(self.settings))
         if self.axis.reduce_at_rest:
-            share = np.array([d.hold_shares[0] for d in self.offers.drivers])
-        floor = cold * (np.nan_to_num(setting) * share) ** 2
+            self.least_share = np.array([d.hold_shares[0] for d in self.offers.drivers])
+        floor = cold * (np.nan_to_num(setting) * self.least_share) ** 2
         for point in self.axis.points:
             at = self._shaft_torque(point)
             work = (point.speed * at)[:, None]
@@ -295,6 +302,7 @@ class AxisTable:
         self._note_unreached(fresh & ~self.reaches)
         fresh &= self.reaches
         w, d, r = np.nonzero(fresh)
+        self.power[w, d, r] = np.inf
         rows = self._within_voltage(Combos(w, d, r, self.first_rank[w, d]))
         found: list[Options] = []
         ahead = 1
@@ -311,6 +319,7 @@ class AxisTable:
             adequate = Options.joined(found)
             for rail in np.unique(adequate.rail).tolist():
                 here = adequate.pick(adequate.rail == rail)
+                np.minimum.at(self.power[:, :, rail], (here.winding, here.driver), here.peak)
                 self.at_rail[rail] = Options.joined([self.at_rail[rail], here])
 
     def _note_unreached(self, failed: Array) -> None:
@@ -333,7 +342,10 @@ class AxisTable:
         adequate, hopeless, options = _Judged(self, tried).outcome()
         going = np.ones(len(rows), dtype=bool)
         going[row[hopeless]] = False
-        if not self.axis.reduce_at_rest:  # the first adequate setting of a row ends it
+        if self.axis.reduce_at_rest:  # a larger setting may still allow a smaller share at rest
+            least = self.least_share[options.driver]
+            going[row[adequate][options.rest_share <= least]] = False
+        else:  # the first adequate setting of a row ends it
             done, first = np.unique(row[adequate], return_index=True)
             going[done] = False
             options = options.pick(first)

@@ -1,16 +1,16 @@
 """Dominance: drops options and feeds that cannot matter, with the argument.
 
-An option p of an axis stands in for an option o of the same axis at the same rail when p is no
-worse in every figure that a row, a goal or a tie-break can see. Take any design with o and put p
-in its place. The voltage is the same, so the bus keeps its feed. Power, returned energy, price,
-volume and mass do not grow; the bus capacitance that takes up braking does not shrink (it is equal
-where a supply limits it); the driver's voltage limit does not fall. Stock is the one coupling that
-could break: p's motor (and driver) is either o's own, or in stock for every axis of every machine,
-so that no number of exchanges runs it out. And p comes strictly before o in the key that orders designs
-(goals, mean power, names): it is no worse in each figure of the key, and where all are equal its
-name comes first. So each exchange lowers the key, exchanging ends, and it ends at the very design
-the tie-break asks for. In a feed the same holds with trims in the key; only one bus takes feeds,
-and each feed's own stock was checked before, so nothing couples.
+An option p of an axis stands in for an option o of the same axis in the same cell (rail and lowest
+driver limit, which both respect) when p is no worse in every figure that a row, a goal or a
+tie-break can see. Take any design with o and put p in its place. The voltage is the same, so the
+bus keeps its feed. Power, returned energy, price, volume and mass do not grow, and the bus
+capacitance that takes up braking does not shrink (it is equal where a supply limits it). Stock is
+the one coupling that could break: p's motor (and driver) is either o's own, or in stock for every
+axis of every machine, so that no number of exchanges runs it out. And p comes strictly before o in
+the key that orders designs (goals, mean power, names): it is no worse in each figure of the key,
+and where all are equal its name comes first. So each exchange lowers the key, exchanging ends, and
+it ends at the very design the tie-break asks for. In a feed the same holds with trims in the key;
+only one bus takes feeds, and each feed's own stock was checked before, so nothing couples.
 """
 
 from __future__ import annotations

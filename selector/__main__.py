@@ -1,0 +1,5 @@
+"""``python -m selector``."""
+
+from .cli import main
+
+main()

@@ -1,0 +1,125 @@
+"""The command line: registers commands and turns errors into exit codes.
+
+Exit codes: 0 an answer; 1 no design exists, or a judged design fails; 2 a fault in the input or
+the call; 3 stopped before proof; 70 a fault of this program.
+"""
+
+from __future__ import annotations
+
+import os
+import sys
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from . import __version__
+from .errors import InputFaults, SelectorError
+
+app = typer.Typer(
+    add_completion=False,
+    no_args_is_help=True,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    help="Choose motors, drivers, settings, bus voltage and supply for the axes of a machine.",
+)
+Json = Annotated[bool, typer.Option("--json", help="Print one JSON object instead of text.")]
+
+
+def _version(wanted: bool) -> None:
+    if wanted:
+        print(f"selector {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def options(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version.")
+    ] = False,
+) -> None:
+    """Choose motors, drivers, settings, bus voltage and supply for the axes of a machine."""
+
+
+@app.command()
+def pick(
+    machine: Annotated[Path, typer.Argument(help="A machine file (YAML).")],
+    save: Annotated[
+        Path | None, typer.Option(help="Keep the design in this file, for judge.")
+    ] = None,
+    as_json: Json = False,
+    seconds: Annotated[
+        float | None,
+        typer.Option(min=0.0, help="Stop after so long and give the best design so far."),
+    ] = None,
+) -> None:
+    """Choose the parts of MACHINE, with proof."""
+    from .commands.pick import run
+
+    raise typer.Exit(run(machine, save, as_json, seconds))
+
+
+@app.command()
+def judge(
+    design: Annotated[Path, typer.Argument(help="A design kept by pick, or written by hand.")],
+    as_json: Json = False,
+) -> None:
+    """Recompute DESIGN and check every rule, without the search."""
+    from .commands.judge import run
+
+    raise typer.Exit(run(design, as_json))
+
+
+@app.command()
+def catalogue(
+    path: Annotated[Path, typer.Argument(help="A catalogue file, or a folder of them.")],
+    as_json: Json = False,
+) -> None:
+    """Check and list the parts in PATH."""
+    from .commands.catalogue import run
+
+    raise typer.Exit(run(path, as_json))
+
+
+def main() -> None:
+    """Run the command line and leave with its exit code."""
+    sys.exit(run_app(sys.argv[1:]))
+
+
+def run_app(arguments: list[str]) -> int:
+    """Run one command; returns the exit code."""
+    import click
+
+    try:
+        code = app(arguments, standalone_mode=False)
+        sys.stdout.flush()
+        return int(code or 0)
+    except click.exceptions.Exit as end:
+        return end.exit_code
+    except click.ClickException as error:
+        error.show()
+        return 2
+    except InputFaults as error:
+        from .reports.terminal import print_faults
+
+        print_faults(error.faults, sys.stderr)
+        return error.exit_code
+    except (KeyboardInterrupt, click.Abort):
+        print("stopped; nothing was written", file=sys.stderr)
+        return 3
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 0
+    except SelectorError as error:
+        print(f"{error.name}: {error}", file=sys.stderr)
+        return error.exit_code
+    except Exception:
+        import traceback
+
+        traceback.print_exc()
+        print("this is a fault of selector, not of your files: please report it", file=sys.stderr)
+        return 70
+
+
+if __name__ == "__main__":
+    main()

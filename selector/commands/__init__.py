@@ -1,0 +1,1 @@
+"""One thin file per command: options in, workflow called, report printed."""

@@ -1,0 +1,19 @@
+"""``selector catalogue``: check and list parts."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+
+from ..reports import tables, terminal
+from ..workflow import load_catalogue
+
+
+def run(path: Path, as_json: bool) -> int:
+    """Read, check and print; returns the exit code."""
+    catalogue = load_catalogue(path)
+    if as_json:
+        print(tables.as_json(tables.catalogue_data(catalogue)))
+    else:
+        terminal.print_catalogue(catalogue, str(path), sys.stdout)
+    return 0

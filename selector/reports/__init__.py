@@ -1,0 +1,1 @@
+"""Answers to text and data; computes nothing."""

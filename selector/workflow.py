@@ -1,0 +1,174 @@
+"""The route from files to answers; the only file that knows the order of the steps."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from . import __version__
+from .domain.machine import Problem
+from .domain.parts import Catalogue
+from .domain.results import Answer, AxisChoice, Design, Goal, Judgement, NextSetting, Proof
+from .errors import WrongVerdict
+from .inputs.design_file import check_design, load_design
+from .inputs.load import load_catalogue, load_problem
+
+if TYPE_CHECKING:
+    from .search.choice import Result
+
+Progress = Callable[[str], None]
+
+__all__ = ["judge_design", "judge_file", "load_catalogue", "load_problem", "pick"]
+
+
+def pick(
+    problem: Problem, seconds: float | None = None, progress: Progress = lambda _: None
+) -> Answer:
+    """Choose the parts of a machine and have the choice judged.
+
+    Parameters
+    ----------
+    problem : Problem
+        From :func:`load_problem`, or made in Python with SI figures.
+    seconds : float, optional
+        Time limit; when it ends the search the answer is not proved. [s]
+    progress : function of str
+        Called with what is being done.
+
+    Returns
+    -------
+    Answer
+        Verdict, design with every figure and finding, and how the program knows.
+
+    Raises
+    ------
+    WrongVerdict
+        If two routes that must agree do not.
+    """
+    from .search.choice import choose, design_of
+
+    result = choose(problem, seconds, progress)
+    design = design_of(result)
+    judgement = None
+    following: tuple[NextSetting, ...] = ()
+    if design is not None:
+        progress("judging the design")
+        judgement = judge_design(problem, design)
+        _agree(result, judgement)
+        following = next_settings(problem, design)
+    return Answer(
+        verdict=result.verdict,  # type: ignore[arg-type]
+        machine=problem.machine_file,
+        goals=_goals(result),
+        judgement=judgement,
+        next_settings=following,
+        rejections=tuple(
+            row.model_copy(update={"axis": axis.axis})
+            for axis, table in zip(problem.machine.axes, result.tables, strict=True)
+            for row in table.rejections()
+        ),
+        reasons=tuple(result.reasons),
+        proof=_proof(result),
+        sources=problem.sources,
+        version=__version__,
+    )
+
+
+def judge_design(problem: Problem, design: Design) -> Judgement:
+    """Recompute a design from catalogue and machine, without the search.
+
+    Raises
+    ------
+    InputFaults
+        If the design names an axis or part that the problem does not have.
+    """
+    from .judge import judge
+
+    check_design(problem, design)
+    return judge(problem, design)
+
+
+def judge_file(path: str | Path) -> Judgement:
+    """Judge a saved or hand-written design file."""
+    problem, design, changed = load_design(path)
+    return judge_design(problem, design).model_copy(update={"changed": changed})
+
+
+def _agree(result: Result, judgement: Judgement) -> None:
+    """The judge must let the search's design stand and come to the same goals."""
+    failing = [f for f in judgement.findings if f.state == "fails"]
+    if failing:
+        said = ", ".join(f"{f.rule} of {f.subject}" for f in failing)
+        raise WrongVerdict(f"the judge fails the design that was chosen ({said}); it is withheld")
+    assert result.choice is not None
+    for goal, value in zip(result.offers.goals, result.choice.values, strict=True):
+        figure = getattr(judgement.totals, goal.name, None)
+        if figure is not None and abs(figure - value / goal.scale) > 64 / goal.scale:
+            raise WrongVerdict(f"search and judge differ on {goal.name}; the design is withheld")
+
+
+def _goals(result: Result) -> tuple[Goal, ...]:
+    choice = result.choice
+    if choice is None:
+        return ()
+    rows = []
+    for number, (goal, value) in enumerate(zip(result.offers.goals, choice.values, strict=True)):
+        bound = result.bound if number == 0 else None
+        if result.verdict == "proved":
+            bound = value
+        rows.append(Goal(
+            name=goal.name, value=value / goal.scale, unit=goal.unit,
+            proved_bound=None if bound is None else bound / goal.scale,
+        ))  # fmt: skip
+    return tuple(rows)
+
+
+def _proof(result: Result) -> Proof:
+    offers, unique = result.offers, {id(t): t for t in result.tables}.values()
+    gap = None
+    if result.choice is not None and result.bound is not None and result.choice.values[0] > 0:
+        gap = max(0.0, 1.0 - result.bound / result.choice.values[0])
+    pairs = len(offers.windings) * len(offers.drivers)
+    return Proof(
+        method="options bounded and judged in arrays; CP-SAT by voltage and driver limit; "
+        "recomputed by the judge",
+        pairs=pairs,
+        voltages=tuple(sorted({rail.voltage for rail in offers.rails})),
+        options=pairs * len(offers.rails) * len(result.tables),
+        judged=sum(t.tried for t in unique),
+        adequate=sum(len(o) for t in unique for o in t.at_rail.values()),
+        solves=result.solves,
+        exclusions=tuple(offers.exclusions),
+        gap=0.0 if result.verdict == "proved" else gap,
+        second_route=result.second_route,
+    )
+
+
+def next_settings(problem: Problem, design: Design) -> tuple[NextSetting, ...]:
+    """For each axis, what its driver's next higher setting would give, all else unchanged."""
+    rows = []
+    for number, choice in enumerate(design.axes):
+        driver = problem.catalogue.find("drivers", choice.driver)
+        higher = [s for s in driver.peak_settings if s > choice.peak * (1 + 1e-9)]
+        if not higher:
+            continue
+        changed = choice.model_copy(update={
+            "current_peak": higher[0], "current_rms": None, "rest_current_peak": None,
+        })  # fmt: skip
+        trial = design.model_copy(update={"axes": _with(design.axes, number, changed)})
+        judgement = judge_design(problem, trial)
+        figures = next(a for a in judgement.axes if a.axis == choice.axis)
+        rows.append(NextSetting(
+            axis=choice.axis, current_peak=higher[0], torque_headroom=figures.torque_headroom,
+            peak_power=figures.peak_power, winding_temperature=figures.winding_temperature,
+            holds=judgement.verdict == "holds",
+            breaks=", ".join(dict.fromkeys(
+                f.rule for f in judgement.findings if f.state == "fails"
+            )),
+        ))  # fmt: skip
+    return tuple(rows)
+
+
+def _with(axes: tuple[AxisChoice, ...], number: int, changed: AxisChoice) -> tuple[AxisChoice, ...]:
+    return (*axes[:number], changed, *axes[number + 1 :])
