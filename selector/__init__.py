@@ -14,17 +14,31 @@ __version__ = "0.1.0"
 
 # Loaded when first asked for, so that the command line answers at once.
 _HOMES = {
-    "load_problem": "workflow", "load_catalogue": "workflow", "pick": "workflow",
-    "judge_design": "workflow", "judge_file": "workflow", "load_design": "inputs.design_file",
-    "Catalogue": "domain.parts", "Motor": "domain.parts", "Driver": "domain.parts",
-    "Supply": "domain.parts", "Machine": "domain.machine", "Axis": "domain.machine",
-    "Point": "domain.machine", "Problem": "domain.machine", "Design": "domain.results",
-    "AxisChoice": "domain.results", "BusChoice": "domain.results", "Answer": "domain.results",
-    "Judgement": "domain.results", "Finding": "domain.results", "InputFaults": "errors",
+    "load_problem": "workflow",
+    "load_catalogue": "workflow",
+    "pick": "workflow",
+    "judge_design": "workflow",
+    "judge_file": "workflow",
+    "load_design": "inputs.design_file",
+    "Catalogue": "domain.parts",
+    "Motor": "domain.parts",
+    "Driver": "domain.parts",
+    "Supply": "domain.parts",
+    "Machine": "domain.machine",
+    "Axis": "domain.machine",
+    "Point": "domain.machine",
+    "Problem": "domain.machine",
+    "Design": "domain.results",
+    "AxisChoice": "domain.results",
+    "BusChoice": "domain.results",
+    "Answer": "domain.results",
+    "Judgement": "domain.results",
+    "Finding": "domain.results",
+    "InputFaults": "errors",
     "SelectorError": "errors",
-}  # fmt: skip
+}
 
-__all__ = ["__version__", *_HOMES]  # noqa: PLE0604
+__all__ = ["__version__", *_HOMES]
 
 
 def __getattr__(name: str) -> Any:

@@ -84,7 +84,9 @@ KINDS: dict[str, Kind] = {
             | {"g*cm2": "g*cm^2", "kg*cm2": "kg*cm^2", "ozf*in*s^2": "ozf*in*s^2"},
             0.0, 100.0, "480 g*cm^2",
         ),
-        Kind("temperature", "degC", _same("degC", "degF") | {"°C": "degC"}, -60.0, 300.0, "40 degC"),
+        Kind(
+            "temperature", "degC", _same("degC", "degF") | {"°C": "degC"}, -60.0, 300.0, "40 degC"
+        ),
         Kind("temperature_difference", "K", _same("K"), 0.0, 300.0, "80 K"),
         Kind("mass", "kg", _same("kg", "g") | {"lb": "lb"}, 0.0, 1e3, "1.2 kg"),
         Kind("length", "m", _same("m", "cm", "mm") | {"in": "inch"}, 0.0, 100.0, "57 mm"),

@@ -8,7 +8,6 @@ from typing import TYPE_CHECKING
 
 from . import __version__
 from .domain.machine import Problem
-from .domain.parts import Catalogue
 from .domain.results import Answer, AxisChoice, Design, Goal, Judgement, NextSetting, Proof
 from .errors import WrongVerdict
 from .inputs.design_file import check_design, load_design
@@ -58,7 +57,7 @@ def pick(
         _agree(result, judgement)
         following = next_settings(problem, design)
     return Answer(
-        verdict=result.verdict,  # type: ignore[arg-type]
+        verdict=result.verdict,
         machine=problem.machine_file,
         goals=_goals(result),
         judgement=judgement,
@@ -117,10 +116,14 @@ def _goals(result: Result) -> tuple[Goal, ...]:
         bound = result.bound if number == 0 else None
         if result.verdict == "proved":
             bound = value
-        rows.append(Goal(
-            name=goal.name, value=value / goal.scale, unit=goal.unit,
-            proved_bound=None if bound is None else bound / goal.scale,
-        ))  # fmt: skip
+        rows.append(
+            Goal(
+                name=goal.name,
+                value=value / goal.scale,
+                unit=goal.unit,
+                proved_bound=None if bound is None else bound / goal.scale,
+            )
+        )
     return tuple(rows)
 
 
@@ -153,20 +156,25 @@ def next_settings(problem: Problem, design: Design) -> tuple[NextSetting, ...]:
         higher = [s for s in driver.peak_settings if s > choice.peak * (1 + 1e-9)]
         if not higher:
             continue
-        changed = choice.model_copy(update={
-            "current_peak": higher[0], "current_rms": None, "rest_current_peak": None,
-        })  # fmt: skip
+        changed = choice.model_copy(
+            update={"current_peak": higher[0], "current_rms": None, "rest_current_peak": None}
+        )
         trial = design.model_copy(update={"axes": _with(design.axes, number, changed)})
         judgement = judge_design(problem, trial)
         figures = next(a for a in judgement.axes if a.axis == choice.axis)
-        rows.append(NextSetting(
-            axis=choice.axis, current_peak=higher[0], torque_headroom=figures.torque_headroom,
-            peak_power=figures.peak_power, winding_temperature=figures.winding_temperature,
-            holds=judgement.verdict == "holds",
-            breaks=", ".join(dict.fromkeys(
-                f.rule for f in judgement.findings if f.state == "fails"
-            )),
-        ))  # fmt: skip
+        rows.append(
+            NextSetting(
+                axis=choice.axis,
+                current_peak=higher[0],
+                torque_headroom=figures.torque_headroom,
+                peak_power=figures.peak_power,
+                winding_temperature=figures.winding_temperature,
+                holds=judgement.verdict == "holds",
+                breaks=", ".join(
+                    dict.fromkeys(f.rule for f in judgement.findings if f.state == "fails")
+                ),
+            )
+        )
     return tuple(rows)
 
 

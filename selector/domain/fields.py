@@ -31,9 +31,7 @@ class Money(NamedTuple):
 def fault(name: str, expected: str, remedy: str = "") -> PydanticCustomError:
     """The error a validator raises: its fields go into a :class:`selector.errors.Fault`."""
     return PydanticCustomError(
-        "selector",  # type: ignore[arg-type]
-        "expected {expected}",
-        {"name": name, "expected": expected, "remedy": remedy},
+        "selector", "expected {expected}", {"name": name, "expected": expected, "remedy": remedy}
     )
 
 

@@ -74,14 +74,16 @@ class Axis(Record):
             raise fault("empty", "at least one point with speed and torque")
         if any(p.acceleration for p in self.points) and self.load_inertia is None:
             raise fault(
-                "missing-key", "load_inertia at the shaft, as a point has an acceleration",
+                "missing-key",
+                "load_inertia at the shaft, as a point has an acceleration",
                 "write 0 kg*m^2 if only the rotor is accelerated",
-            )  # fmt: skip
+            )
         if self.vertical and self.holding_torque is None:
             raise fault(
-                "missing-key", "holding_torque of a vertical axis",
+                "missing-key",
+                "holding_torque of a vertical axis",
                 "state the torque that keeps its load from falling",
-            )  # fmt: skip
+            )
         shares = [p.share for p in self.points]
         if any(s is not None for s in shares):
             if any(s is None for s in shares):

@@ -109,9 +109,10 @@ class Part(Record):
         kept = {key: value for key, value in data.items() if key != "price"}
         return kept | {
             "price_table": tuple(sorted(steps)),
-            "price": _money(str(min(steps)[1])) if currency is None
+            "price": _money(str(min(steps)[1]))
+            if currency is None
             else _money(f"{min(steps)[1]} {currency}"),
-        }  # fmt: skip
+        }
 
     @property
     def outer_volume(self) -> float | None:
@@ -161,9 +162,10 @@ class Motor(Part):
             raise fault("contradiction", "no joinings or rated_as on a motor with 4 wires")
         if self.wires != 4 and self.rated_as is None:
             raise fault(
-                "missing-key", "rated_as: series, parallel or unipolar",
+                "missing-key",
+                "rated_as: series, parallel or unipolar",
                 f"say what the rating of this {self.wires}-wire motor stands for",
-            )  # fmt: skip
+            )
         if self.wires != 4 and not self.joinings:
             raise fault("missing-key", "joinings such as [series, parallel]")
         if self.wires == 6 and (self.joinings != ("series",) or self.rated_as == "parallel"):

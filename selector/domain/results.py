@@ -36,9 +36,10 @@ class AxisChoice(Record):
     def _one_current(self) -> AxisChoice:
         if (self.current_peak is None) == (self.current_rms is None):
             raise fault(
-                "missing-key", "one of current_peak and current_rms",
+                "missing-key",
+                "one of current_peak and current_rms",
                 "state the setting as the driver's sheet does, peak or RMS",
-            )  # fmt: skip
+            )
         if self.reduction is not None:
             raise fault("not-yet", "no reduction", "this version judges axes without reduction")
         return self
@@ -48,7 +49,7 @@ class AxisChoice(Record):
         """Peak of the phase sine it is set to. [A]"""
         if self.current_peak is not None:
             return self.current_peak
-        return (self.current_rms or 0.0) * 2.0**0.5
+        return float((self.current_rms or 0.0) * 2.0**0.5)
 
 
 class BusChoice(Record):

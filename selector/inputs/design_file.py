@@ -99,16 +99,25 @@ def _unknown_names(problem: Problem, design: Design, node: Node | None, file: st
         if choice.axis not in asked:
             near = difflib.get_close_matches(choice.axis, asked, n=1, cutoff=0.5)
             hint = f'closest: "{near[0]}"' if near else "axes: " + ", ".join(asked)
-            add(("axes", k, "axis"), "unknown-axis", f"axis: {choice.axis}", "an axis of the machine",
-                hint)  # fmt: skip
+            add(
+                ("axes", k, "axis"),
+                "unknown-axis",
+                f"axis: {choice.axis}",
+                "an axis of the machine",
+                hint,
+            )
         if given.index(choice.axis) != k:
             add(("axes", k, "axis"), "doubled-name", f"axis: {choice.axis}", "each axis once")
         motor = part(("axes", k, "motor"), "motors", choice.motor)
         part(("axes", k, "driver"), "drivers", choice.driver)
         if motor is not None and joining_of(choice, motor.ways) is None:
-            add(("axes", k, "motor" if choice.joining is None else "joining"), "unknown-joining",
-                f"joining: {choice.joining or 'not stated'}", " or ".join(motor.ways),
-                f"say how {motor.part} is wired")  # fmt: skip
+            add(
+                ("axes", k, "motor" if choice.joining is None else "joining"),
+                "unknown-joining",
+                f"joining: {choice.joining or 'not stated'}",
+                " or ".join(motor.ways),
+                f"say how {motor.part} is wired",
+            )
     for missing in [name for name in asked if name not in given]:
         add(
             ("axes",),
@@ -140,7 +149,7 @@ def _changed(record: Any, sources: tuple[Source, ...], folder: Path) -> tuple[st
     }
     now = {os.path.normpath(source.file): source.sha256 for source in sources}
     changed = [name for name, digest in now.items() if before.get(name) != digest]
-    return tuple([*changed, *(name for name in before if name not in now)])
+    return (*changed, *(name for name in before if name not in now))
 
 
 def save_design(answer: Answer, path: str | Path, record: dict[str, Any]) -> None:
@@ -155,8 +164,19 @@ def save_design(answer: Answer, path: str | Path, record: dict[str, Any]) -> Non
     if answer.design is None:
         raise InputFaults([Fault(str(path), 0, 0, "no-design", "no design found", "a design")])
     if file.exists() and not _is_ours(file):
-        raise InputFaults([Fault(str(path), 0, 0, "occupied", "a file that selector did not write",
-                                 "a new name or an earlier design", "choose another name")])  # fmt: skip
+        raise InputFaults(
+            [
+                Fault(
+                    str(path),
+                    0,
+                    0,
+                    "occupied",
+                    "a file that selector did not write",
+                    "a new name or an earlier design",
+                    "choose another name",
+                )
+            ]
+        )
     _write_whole(file, FIRST_LINE + design_text(answer, file.parent, record))
 
 
@@ -175,15 +195,17 @@ def design_text(answer: Answer, folder: Path, record: dict[str, Any]) -> str:
         for choice in answer.design.axes
     ]
     buses = [
-        bus.model_dump(exclude_none=True) | {"voltage": f"{bus.voltage:.12g} V",
-                                             "axes": list(bus.axes)}
+        bus.model_dump(exclude_none=True)
+        | {"voltage": f"{bus.voltage:.12g} V", "axes": list(bus.axes)}
         for bus in answer.design.buses
-    ]  # fmt: skip
+    ]
     inputs = [{"file": relative(s.file), "sha256": s.sha256} for s in answer.sources]
     data = {
-        "machine": relative(answer.machine), "axes": axes, "buses": buses,
+        "machine": relative(answer.machine),
+        "axes": axes,
+        "buses": buses,
         "record": {"version": answer.version, "inputs": inputs, **record},
-    }  # fmt: skip
+    }
     return str(yaml.safe_dump(data, sort_keys=False, allow_unicode=True, width=100))
 
 
@@ -199,8 +221,18 @@ def _write_whole(file: Path, text: str) -> None:
     try:
         handle, name = tempfile.mkstemp(prefix=f".{file.name}.", dir=file.parent)
     except OSError as error:
-        raise InputFaults([Fault(str(file), 0, 0, "unwritable", error.strerror or str(error),
-                                 "a folder that can be written")]) from None  # fmt: skip
+        raise InputFaults(
+            [
+                Fault(
+                    str(file),
+                    0,
+                    0,
+                    "unwritable",
+                    error.strerror or str(error),
+                    "a folder that can be written",
+                )
+            ]
+        ) from None
     try:
         with os.fdopen(handle, "w", encoding="utf-8") as stream:
             stream.write(text)
@@ -213,8 +245,18 @@ def _write_whole(file: Path, text: str) -> None:
         with contextlib.suppress(OSError):
             Path(name).unlink()
         if isinstance(error, OSError):
-            raise InputFaults([Fault(str(file), 0, 0, "unwritable", error.strerror or str(error),
-                                     "a place that can be written")]) from None  # fmt: skip
+            raise InputFaults(
+                [
+                    Fault(
+                        str(file),
+                        0,
+                        0,
+                        "unwritable",
+                        error.strerror or str(error),
+                        "a place that can be written",
+                    )
+                ]
+            ) from None
         raise
 
 

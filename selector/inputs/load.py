@@ -39,8 +39,16 @@ def load_problem(path: str | Path) -> Problem:
             files += found
         else:
             near = catalogue_files(Path(path).parent / name, [])[0]
-            faults.append(Fault(str(path), *place, "missing-file", f"catalogues: {name}",
-                                "a catalogue file or folder", f"nothing at {near}"))  # fmt: skip
+            faults.append(
+                Fault(
+                    str(path),
+                    *place,
+                    "missing-file",
+                    f"catalogues: {name}",
+                    "a catalogue file or folder",
+                    f"nothing at {near}",
+                )
+            )
     catalogue, sources = _read_catalogue(files, faults)
     if faults or machine is None:
         raise InputFaults(faults)
@@ -92,8 +100,16 @@ def read_node(path: Path, shown: str, faults: list[Fault]) -> tuple[Node | None,
     node, found = parse(text, shown)
     faults += found
     if node is not None and not isinstance(node.value, dict):
-        faults.append(Fault(shown, node.line, node.column, "wrong-shape", "a list or bare text",
-                            "keys with values at the top of the file"))  # fmt: skip
+        faults.append(
+            Fault(
+                shown,
+                node.line,
+                node.column,
+                "wrong-shape",
+                "a list or bare text",
+                "keys with values at the top of the file",
+            )
+        )
         node = None
     return node, Source(file=shown, sha256=hashlib.sha256(data).hexdigest())
 
@@ -138,11 +154,24 @@ def _fault(
     if kind == "missing":
         owner, place = root.at(path + loc[:-1])
         what = _named(owner)
-        return Fault(file, owner.line, owner.column, "missing-key", f"no {key}{what}", f"{key}",
-                     "add the key")  # fmt: skip
+        return Fault(
+            file,
+            owner.line,
+            owner.column,
+            "missing-key",
+            f"no {key}{what}",
+            f"{key}",
+            "add the key",
+        )
     if kind == "selector":
-        return Fault(file, *place, context["name"], _written(key, node), context["expected"],
-                     context["remedy"])  # fmt: skip
+        return Fault(
+            file,
+            *place,
+            context["name"],
+            _written(key, node),
+            context["expected"],
+            context["remedy"],
+        )
     if kind == "literal_error":
         found = str(node.value)
         choices = [c.strip("'") for c in context["expected"].replace(" or ", ", ").split(", ")]
@@ -210,18 +239,33 @@ def _read_parts(root: Node, file: str, parts: dict[str, list[Part]], faults: lis
     currency = root.value.get("currency")
     known = [*KINDS, "currency", "note"]
     if currency is not None and not CURRENCY.match(str(currency.value)):
-        faults.append(Fault(file, *root.keys["currency"], "no-currency",
-                            _written("currency", currency), "three capitals such as EUR"))  # fmt: skip
+        faults.append(
+            Fault(
+                file,
+                *root.keys["currency"],
+                "no-currency",
+                _written("currency", currency),
+                "three capitals such as EUR",
+            )
+        )
         return
     for key, node in root.value.items():
         if key not in known:
             near = difflib.get_close_matches(key, known, n=1, cutoff=0.6)
             hint = f'closest known key: "{near[0]}"' if near else "known: " + ", ".join(known)
-            faults.append(Fault(file, *root.keys[key], "unknown-key", f"{key}:",
-                                "a kind of part", hint))  # fmt: skip
+            faults.append(
+                Fault(file, *root.keys[key], "unknown-key", f"{key}:", "a kind of part", hint)
+            )
         elif key in KINDS and not isinstance(node.value, list):
-            faults.append(Fault(file, *root.keys[key], "wrong-shape", _written(key, node),
-                                "a list of parts, each after a dash"))  # fmt: skip
+            faults.append(
+                Fault(
+                    file,
+                    *root.keys[key],
+                    "wrong-shape",
+                    _written(key, node),
+                    "a list of parts, each after a dash",
+                )
+            )
         elif key in KINDS:
             for index, entry in enumerate(node.value):
                 data = entry.plain()
@@ -236,9 +280,17 @@ def _placed(part: Part, origin: str, currency: Node | None, faults: list[Fault])
     if price is not None and price.currency is None:
         if currency is None:
             file, line, column = origin.rsplit(":", 2)
-            faults.append(Fault(file, int(line), int(column), "no-currency",
-                                f'price of "{part.part}" without currency',
-                                "a currency", "put `currency: EUR` at the top of the file"))  # fmt: skip
+            faults.append(
+                Fault(
+                    file,
+                    int(line),
+                    int(column),
+                    "no-currency",
+                    f'price of "{part.part}" without currency',
+                    "a currency",
+                    "put `currency: EUR` at the top of the file",
+                )
+            )
         else:
             price = Money(price.amount, str(currency.value))
     return part.model_copy(update={"origin": origin, "price": price})
@@ -250,7 +302,15 @@ def _refuse_doubled(parts: dict[str, list[Part]], faults: list[Fault]) -> None:
         for entry in entries:
             if entry.part in seen:
                 file, line, column = entry.origin.rsplit(":", 2)
-                faults.append(Fault(file, int(line), int(column), "doubled-part",
-                                    f"part: {entry.part}", "a name of its own for each part",
-                                    f"it stands at {seen[entry.part].origin} already"))  # fmt: skip
+                faults.append(
+                    Fault(
+                        file,
+                        int(line),
+                        int(column),
+                        "doubled-part",
+                        f"part: {entry.part}",
+                        "a name of its own for each part",
+                        f"it stands at {seen[entry.part].origin} already",
+                    )
+                )
             seen.setdefault(entry.part, entry)

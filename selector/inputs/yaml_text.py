@@ -70,8 +70,13 @@ class _Reader:
         next(self.events)
         event = next(self.events)
         if not isinstance(event, yaml.StreamEndEvent):
-            self.fault(event.start_mark, "second-document", "---", "one document in a file",
-                       "put the second one into a file of its own")  # fmt: skip
+            self.fault(
+                event.start_mark,
+                "second-document",
+                "---",
+                "one document in a file",
+                "put the second one into a file of its own",
+            )
         return node
 
     def node(self, event: Any, depth: int) -> Node:
@@ -105,8 +110,13 @@ class _Reader:
                 self.fault(mark, "odd-key", "a list as key", "a word as key")
             elif key in values:
                 first = keys[key][0]
-                self.fault(mark, "doubled-key", f"{key}: again", f'"{key}" once',
-                           f"it stands in line {first} already; drop one")  # fmt: skip
+                self.fault(
+                    mark,
+                    "doubled-key",
+                    f"{key}: again",
+                    f'"{key}" once',
+                    f"it stands in line {first} already; drop one",
+                )
             else:
                 values[key], keys[key] = value, (mark.line + 1, mark.column + 1)
         return Node(values, line, column, keys)
@@ -130,10 +140,19 @@ def parse(text: str, file: str) -> tuple[Node | None, list[Fault]]:
         return None, reader.faults
     except yaml.YAMLError as error:
         mark = getattr(error, "problem_mark", None)
-        place = (mark.line + 1, mark.column + 1) if mark else (0, 0)
+        line, column = (mark.line + 1, mark.column + 1) if mark else (0, 0)
         problem = str(getattr(error, "problem", None) or getattr(error, "reason", error))
-        reader.faults.append(Fault(file, *place, "broken-yaml", problem, "YAML that can be read",
-                                   "check indents, quotes and colons near this place"))  # fmt: skip
+        reader.faults.append(
+            Fault(
+                file,
+                line,
+                column,
+                "broken-yaml",
+                problem,
+                "YAML that can be read",
+                "check indents, quotes and colons near this place",
+            )
+        )
         return None, reader.faults
     if node is None:
         reader.faults.append(Fault(file, 0, 0, "empty-file", "nothing in it", "keys and values"))

@@ -13,9 +13,17 @@ Findings = Iterator[Finding]
 
 
 def finding(
-    rule: str, subject: str, actual: float | None, limit: float | None, unit: str,
-    headroom: float | None, state: State, standing: Standing, note: str = "", margin: float = 0.0,
-) -> Finding:  # fmt: skip
+    rule: str,
+    subject: str,
+    actual: float | None,
+    limit: float | None,
+    unit: str,
+    headroom: float | None,
+    state: State,
+    standing: Standing,
+    note: str = "",
+    margin: float = 0.0,
+) -> Finding:
     """A finding with its figures in one unit; figures that are not finite are left out."""
 
     def quantity(value: float | None) -> Quantity | None:
@@ -26,15 +34,28 @@ def finding(
     if headroom is not None and abs(headroom) == float("inf"):
         headroom = None
     return Finding(
-        rule=rule, subject=subject, actual=quantity(actual), limit=quantity(limit),
-        headroom=headroom, margin=margin, state=state, standing=standing, note=note,
-    )  # fmt: skip
+        rule=rule,
+        subject=subject,
+        actual=quantity(actual),
+        limit=quantity(limit),
+        headroom=headroom,
+        margin=margin,
+        state=state,
+        standing=standing,
+        note=note,
+    )
 
 
 def at_most(
-    rule: str, subject: str, actual: float, limit: float, unit: str,
-    standing: Standing = "stated", note: str = "", least: float = 0.0,
-) -> Finding:  # fmt: skip
+    rule: str,
+    subject: str,
+    actual: float,
+    limit: float,
+    unit: str,
+    standing: Standing = "stated",
+    note: str = "",
+    least: float = 0.0,
+) -> Finding:
     """A finding that ``actual`` must not pass ``limit``; headroom is limit over actual, minus 1."""
     headroom = limit / actual - 1.0 if actual > 0 else None
     passes = headroom is None or headroom >= least - CLOSE
@@ -45,9 +66,15 @@ def at_most(
 
 
 def at_least(
-    rule: str, subject: str, actual: float, limit: float, unit: str,
-    standing: Standing = "stated", note: str = "", least: float = 0.0,
-) -> Finding:  # fmt: skip
+    rule: str,
+    subject: str,
+    actual: float,
+    limit: float,
+    unit: str,
+    standing: Standing = "stated",
+    note: str = "",
+    least: float = 0.0,
+) -> Finding:
     """A finding that ``actual`` must reach ``limit``; headroom is actual over limit, minus 1."""
     headroom = actual / limit - 1.0 if limit > 0 else None
     passes = headroom is None or headroom >= least - CLOSE
@@ -61,9 +88,16 @@ def frame(case: AxisCase) -> Findings:
         fits = any(abs(case.motor.frame - f) < 1e-6 for f in case.axis.frames)
         wanted = ", ".join(f"{1000 * f:g}" for f in case.axis.frames)
         yield finding(
-            "frame", case.axis.axis, case.motor.frame, None, "m", None,
-            "passes" if fits else "fails", "stated", f"the axis takes {wanted} mm",
-        )  # fmt: skip
+            "frame",
+            case.axis.axis,
+            case.motor.frame,
+            None,
+            "m",
+            None,
+            "passes" if fits else "fails",
+            "stated",
+            f"the axis takes {wanted} mm",
+        )
 
 
 def current_setting(case: AxisCase) -> Findings:
@@ -73,17 +107,28 @@ def current_setting(case: AxisCase) -> Findings:
     on_driver = any(abs(s - peak) <= 1e-6 * s for s in settings)
     nearest = min(settings, key=lambda s: abs(s - peak))
     yield finding(
-        "setting on the driver", subject, peak, nearest, "A", None,
-        "passes" if on_driver else "fails", "stated",
+        "setting on the driver",
+        subject,
+        peak,
+        nearest,
+        "A",
+        None,
+        "passes" if on_driver else "fails",
+        "stated",
         "" if on_driver else f"the nearest setting of {case.driver.part} is {nearest:.4g} A peak",
-    )  # fmt: skip
+    )
     derated = settings[-1] * _driver_share(case)
     standing: Standing = "stated" if case.driver.derating else "practice"
     yield at_most("driver current", subject, peak, derated, "A", standing)
     yield at_most(
-        "motor peak current", subject, peak, 2**0.5 * case.joined.rated_current, "A", "derived",
+        "motor peak current",
+        subject,
+        peak,
+        2**0.5 * case.joined.rated_current,
+        "A",
+        "derived",
         "1.41 times the rated current of both phases",
-    )  # fmt: skip
+    )
 
 
 def _driver_share(case: AxisCase) -> float:
@@ -106,25 +151,46 @@ def rest_share(case: AxisCase) -> Findings:
     if case.choice.rest_current_peak is None:
         return
     if case.rest_share < 1.0 - 1e-6 and not case.axis.reduce_at_rest:
-        yield finding("reduced at rest", case.axis.axis, case.rest_share, None, "1", None, "fails",
-                      "stated", "the axis does not say reduce_at_rest: yes")  # fmt: skip
+        yield finding(
+            "reduced at rest",
+            case.axis.axis,
+            case.rest_share,
+            None,
+            "1",
+            None,
+            "fails",
+            "stated",
+            "the axis does not say reduce_at_rest: yes",
+        )
     shares = case.driver.hold_shares
     has = any(abs(share - case.rest_share) < 1e-6 for share in shares)
     offered = ", ".join(f"{100 * s:g} %" for s in shares)
     yield finding(
-        "rest share on the driver", case.axis.axis, case.rest_share, None, "1", None,
-        "passes" if has else "fails", "stated", f"the driver offers {offered}",
-    )  # fmt: skip
+        "rest share on the driver",
+        case.axis.axis,
+        case.rest_share,
+        None,
+        "1",
+        None,
+        "passes" if has else "fails",
+        "stated",
+        f"the driver offers {offered}",
+    )
 
 
 def holding(case: AxisCase) -> Findings:
     """Torque held at rest against the demand, with the torque margin; detent not counted."""
     held = float(torque.standstill_torque(case.K, case.rest_current))
     yield at_least(
-        "holding", case.axis.axis, held, case.holding_needed, "N*m", "simulated",
+        "holding",
+        case.axis.axis,
+        held,
+        case.holding_needed,
+        "N*m",
+        "simulated",
         "" if case.holding_needed else "nothing is asked at rest",
         least=case.machine.margins.torque,
-    )  # fmt: skip
+    )
 
 
 def held_without_power(case: AxisCase) -> Findings:
@@ -133,16 +199,40 @@ def held_without_power(case: AxisCase) -> Findings:
         return
     subject, brake = case.axis.axis, case.motor.brake
     if case.axis.held_without_power:
-        yield finding("held without power", subject, None, None, "N*m", None, "passes", "stated",
-                      "held_without_power: yes")  # fmt: skip
+        yield finding(
+            "held without power",
+            subject,
+            None,
+            None,
+            "N*m",
+            None,
+            "passes",
+            "stated",
+            "held_without_power: yes",
+        )
     elif brake is not None:
-        yield at_least("held without power", subject, brake.torque, case.holding_needed, "N*m",
-                       "stated", "by the motor's brake", case.machine.margins.torque)  # fmt: skip
+        yield at_least(
+            "held without power",
+            subject,
+            brake.torque,
+            case.holding_needed,
+            "N*m",
+            "stated",
+            "by the motor's brake",
+            case.machine.margins.torque,
+        )
     else:
         yield finding(
-            "held without power", subject, None, case.holding_needed, "N*m", None, "unknown",
-            "practice", "say held_without_power: yes if a brake, counterweight or screw holds it",
-        )  # fmt: skip
+            "held without power",
+            subject,
+            None,
+            case.holding_needed,
+            "N*m",
+            None,
+            "unknown",
+            "practice",
+            "say held_without_power: yes if a brake, counterweight or screw holds it",
+        )
 
 
 def step_rate(case: AxisCase) -> Findings:
@@ -150,11 +240,29 @@ def step_rate(case: AxisCase) -> Findings:
     rate, subject = case.step_rate(case.microsteps), case.axis.axis
     note = f"at 1/{case.microsteps} steps"
     if case.microsteps not in case.driver.microsteps:
-        yield finding("microsteps", subject, None, None, "1", None, "fails", "stated",
-                      f"the driver has no 1/{case.microsteps} step")  # fmt: skip
+        yield finding(
+            "microsteps",
+            subject,
+            None,
+            None,
+            "1",
+            None,
+            "fails",
+            "stated",
+            f"the driver has no 1/{case.microsteps} step",
+        )
     if case.step_limit is None:
-        yield finding("step rate", subject, rate, None, "Hz", None, "unknown", "stated",
-                      f"{note}; state limits: step_rate of the controller")  # fmt: skip
+        yield finding(
+            "step rate",
+            subject,
+            rate,
+            None,
+            "Hz",
+            None,
+            "unknown",
+            "stated",
+            f"{note}; state limits: step_rate of the controller",
+        )
     else:
         yield at_most("step rate", subject, rate, case.step_limit, "Hz", "derived", note)
 
@@ -170,18 +278,29 @@ def winding_temperature(case: AxisCase) -> Findings:
         note += "; insulation class B assumed"
     fits = case.temperature <= case.heat_limit + 1e-6
     yield finding(
-        "winding temperature", subject, None if runaway else case.temperature, case.heat_limit,
-        "degC", room / rise - 1.0 if rise > 0 else None, "passes" if fits else "fails", "guess",
+        "winding temperature",
+        subject,
+        None if runaway else case.temperature,
+        case.heat_limit,
+        "degC",
+        room / rise - 1.0 if rise > 0 else None,
+        "passes" if fits else "fails",
+        "guess",
         note,
-    )  # fmt: skip
+    )
     if case.motor.case_limit is not None:
         shown = float(thermal.case_temperature(ambient, case.temperature))
         allowed = case.motor.case_limit - ambient
         yield finding(
-            "case temperature", subject, shown, case.motor.case_limit, "degC",
+            "case temperature",
+            subject,
+            shown,
+            case.motor.case_limit,
+            "degC",
             allowed / (shown - ambient) - 1.0 if shown > ambient else None,
-            "passes" if shown <= case.motor.case_limit + 1e-6 else "fails", "guess",
-        )  # fmt: skip
+            "passes" if shown <= case.motor.case_limit + 1e-6 else "fails",
+            "guess",
+        )
 
 
 def torque_headroom(case: AxisCase) -> Findings:
@@ -190,8 +309,16 @@ def torque_headroom(case: AxisCase) -> Findings:
     unknown = case.axis.accelerates and case.motor.rotor_inertia is None
     usable = float(worst.chain.usable)
     least = case.machine.margins.torque
-    found = at_least("torque", case.axis.axis, usable, worst.required, "N*m", "simulated",
-                     f"at {worst.speed * 30 / 3.141592653589793:.0f} rpm", least)  # fmt: skip
+    found = at_least(
+        "torque",
+        case.axis.axis,
+        usable,
+        worst.required,
+        "N*m",
+        "simulated",
+        f"at {worst.speed * 30 / 3.141592653589793:.0f} rpm",
+        least,
+    )
     if unknown and found.state == "passes":
         note = f"{found.note}; {case.motor.part} states no rotor_inertia, which counts here"
         found = found.model_copy(update={"state": "unknown", "note": note})
@@ -199,6 +326,13 @@ def torque_headroom(case: AxisCase) -> Findings:
 
 
 RULES = (
-    frame, current_setting, rest_share, rest_current, holding, held_without_power, step_rate,
-    winding_temperature, torque_headroom,
-)  # fmt: skip
+    frame,
+    current_setting,
+    rest_share,
+    rest_current,
+    holding,
+    held_without_power,
+    step_rate,
+    winding_temperature,
+    torque_headroom,
+)

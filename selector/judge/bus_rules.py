@@ -16,10 +16,13 @@ def driver_voltage(bus: BusCase) -> Findings:
         drives = case.driver.supply_voltage
         yield at_least("lowest driver voltage", case.axis.axis, bus.lowest, drives.min, "V")
         yield at_most(
-            "highest driver voltage", case.axis.axis, bus.highest,
-            bus.machine.margins.voltage_use * drives.max, "V",
+            "highest driver voltage",
+            case.axis.axis,
+            bus.highest,
+            bus.machine.margins.voltage_use * drives.max,
+            "V",
             note=f"{100 * bus.machine.margins.voltage_use:g} % of {drives.max:g} V",
-        )  # fmt: skip
+        )
 
 
 def set_voltage(bus: BusCase) -> Findings:
@@ -67,10 +70,16 @@ def supply_power(bus: BusCase) -> Findings:
 def braking_rise(bus: BusCase) -> Findings:
     """Emergency stop of all axes: the highest moment within the drivers' limit and the trip."""
     energy, held = bus.returned_energy, bus.capacitance
-    unknown = [c.axis.axis for c in bus.axes if c.axis.load_inertia is None or (
-        c.motor.rotor_inertia is None)]  # fmt: skip
-    driven = [c.axis.axis for c in bus.axes
-              if c.axis.driving_torque > 0 and c.axis.stop_deceleration is None]  # fmt: skip
+    unknown = [
+        c.axis.axis
+        for c in bus.axes
+        if c.axis.load_inertia is None or (c.motor.rotor_inertia is None)
+    ]
+    driven = [
+        c.axis.axis
+        for c in bus.axes
+        if c.axis.driving_torque > 0 and c.axis.stop_deceleration is None
+    ]
     notes = []
     if bus.absorbs_energy:
         notes.append("the supply takes energy back")
@@ -80,11 +89,19 @@ def braking_rise(bus: BusCase) -> Findings:
         notes.append("inertia not stated: " + ", ".join(unknown))
     if driven:
         notes.append("stop_deceleration not stated although the load drives: " + ", ".join(driven))
-    for rule, limit in (("braking rise", bus.voltage_limit),
-                        ("overvoltage trip", bus.trip)):  # fmt: skip
+    for rule, limit in (("braking rise", bus.voltage_limit), ("overvoltage trip", bus.trip)):
         if limit is None:
-            yield finding(rule, "bus", bus.risen_voltage, None, "V", None, "unknown", "stated",
-                          "overvoltage_trip of the supply not stated")  # fmt: skip
+            yield finding(
+                rule,
+                "bus",
+                bus.risen_voltage,
+                None,
+                "V",
+                None,
+                "unknown",
+                "stated",
+                "overvoltage_trip of the supply not stated",
+            )
             continue
         note = "; ".join(notes)
         if bus.risen_voltage > limit:
@@ -109,8 +126,17 @@ def startup_capacitance(bus: BusCase) -> Findings:
     silent = [c.driver.part for c in bus.axes if c.driver.bus_capacitance is None]
     held = sum(c.driver.bus_capacitance or 0.0 for c in bus.axes) + bus.machine.bus_capacitance
     if one is None:
-        yield finding("start-up capacitance", "bus", held, None, "F", None, "unknown", "stated",
-                      "largest_startup_capacitance of the supply not stated")  # fmt: skip
+        yield finding(
+            "start-up capacitance",
+            "bus",
+            held,
+            None,
+            "F",
+            None,
+            "unknown",
+            "stated",
+            "largest_startup_capacitance of the supply not stated",
+        )
         return
     found = at_most("start-up capacitance", "bus", held, bus.count * one, "F")
     if silent and found.state == "passes":
@@ -130,8 +156,17 @@ def steady_lowering(bus: BusCase) -> Findings:
     if over > 0:
         limit = min(bus.voltage_limit, bus.trip or bus.voltage_limit)
         note += f"; a braking resistor of {limit**2 / over:.0f} ohm and {over:.0f} W would take it"
-    yield finding("steady lowering", "bus", returned, consumed, "W", None,
-                  "unknown" if over > 0 else "passes", "derived", note)  # fmt: skip
+    yield finding(
+        "steady lowering",
+        "bus",
+        returned,
+        consumed,
+        "W",
+        None,
+        "unknown" if over > 0 else "passes",
+        "derived",
+        note,
+    )
 
 
 def stock(bus: BusCase) -> Findings:
@@ -139,8 +174,9 @@ def stock(bus: BusCase) -> Findings:
     for _, part, number in bus.parts.values():
         needed = number * bus.machine.quantity
         if part.stock is None:
-            yield finding("stock", part.part, needed, None, "1", None, "unknown", "stated",
-                          "stock not stated")  # fmt: skip
+            yield finding(
+                "stock", part.part, needed, None, "1", None, "unknown", "stated", "stock not stated"
+            )
         else:
             yield at_most("stock", part.part, needed, part.stock, "1")
 
@@ -150,13 +186,25 @@ def limits(bus: BusCase) -> Findings:
     machine = bus.machine
     rows = bus.parts.values()
     sums = (
-        ("price", machine.limits.price and float(machine.limits.price.amount), machine.currency,
-         [None if p.price is None else float(p.price.amount) * n for _, p, n in rows]),
-        ("volume", machine.limits.volume, "m^3",
-         [None if p.outer_volume is None else p.outer_volume * n for _, p, n in rows]),
-        ("mass", machine.limits.mass, "kg",
-         [None if p.mass is None else p.mass * n for _, p, n in rows]),
-    )  # fmt: skip
+        (
+            "price",
+            machine.limits.price and float(machine.limits.price.amount),
+            machine.currency,
+            [None if p.price is None else float(p.price.amount) * n for _, p, n in rows],
+        ),
+        (
+            "volume",
+            machine.limits.volume,
+            "m^3",
+            [None if p.outer_volume is None else p.outer_volume * n for _, p, n in rows],
+        ),
+        (
+            "mass",
+            machine.limits.mass,
+            "kg",
+            [None if p.mass is None else p.mass * n for _, p, n in rows],
+        ),
+    )
     for name, limit, unit, amounts in sums:
         if limit is None:
             continue
@@ -168,14 +216,31 @@ def limits(bus: BusCase) -> Findings:
     if machine.limits.lead_time is not None:
         for _, part, _ in rows:
             if part.lead_time is None:
-                yield finding("lead time", part.part, None, machine.limits.lead_time, "day", None,
-                              "unknown", "stated", "lead time not stated")  # fmt: skip
+                yield finding(
+                    "lead time",
+                    part.part,
+                    None,
+                    machine.limits.lead_time,
+                    "day",
+                    None,
+                    "unknown",
+                    "stated",
+                    "lead time not stated",
+                )
             else:
-                yield at_most("lead time", part.part, part.lead_time, machine.limits.lead_time,
-                              "day")  # fmt: skip
+                yield at_most(
+                    "lead time", part.part, part.lead_time, machine.limits.lead_time, "day"
+                )
 
 
 RULES = (
-    set_voltage, driver_voltage, units_in_parallel, supply_power, braking_rise,
-    startup_capacitance, steady_lowering, stock, limits,
-)  # fmt: skip
+    set_voltage,
+    driver_voltage,
+    units_in_parallel,
+    supply_power,
+    braking_rise,
+    startup_capacitance,
+    steady_lowering,
+    stock,
+    limits,
+)

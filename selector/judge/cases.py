@@ -182,13 +182,21 @@ class AxisCase:
                 copper += share * J.resistance * self.rest_current**2
                 continue
             i_d, i_q = power.phase_currents(
-                point.speed, self.shaft_torque(point), self.voltage, self.choice.peak, R,
-                J.inductance, self.K, self.N,
-            )  # fmt: skip
+                point.speed,
+                self.shaft_torque(point),
+                self.voltage,
+                self.choice.peak,
+                R,
+                J.inductance,
+                self.K,
+                self.N,
+            )
             copper += share * J.resistance * float(i_d**2 + i_q**2)
-            core += share * float(power.iron_loss(
-                point.speed, i_d, i_q, J.holding_torque, J.inductance, self.K, self.N, iron
-            ))  # fmt: skip
+            core += share * float(
+                power.iron_loss(
+                    point.speed, i_d, i_q, J.holding_torque, J.inductance, self.K, self.N, iron
+                )
+            )
         return copper, core
 
     @cached_property
@@ -235,11 +243,21 @@ class AxisCase:
         t = self.machine.tolerances
         widths = torque.Tolerances(t.resistance, t.inductance, t.torque, self.spread)
         return torque.torque_chain(
-            speed, self.voltage, self.choice.peak, self.motor_resistance,
-            self.driver.bridge_resistance, self.joined.inductance, self.K, self.N,
-            self.driver.regulator_time, self.detent, self.damping_ratio, self.microsteps, widths,
+            speed,
+            self.voltage,
+            self.choice.peak,
+            self.motor_resistance,
+            self.driver.bridge_resistance,
+            self.joined.inductance,
+            self.K,
+            self.N,
+            self.driver.regulator_time,
+            self.detent,
+            self.damping_ratio,
+            self.microsteps,
+            widths,
             t.combine,
-        )  # fmt: skip
+        )
 
     @property
     def worst(self) -> Judged:
@@ -254,17 +272,27 @@ class AxisCase:
     def power_at(self, speed: float, point: Point) -> float:
         """Bus power, with the iron loss the supply is sized for. [W]"""
         J = self.joined
-        return float(power.bus_power(
-            speed, self.shaft_torque(point), self.voltage, self.choice.peak, self.resistance,
-            J.inductance, self.K, self.N, J.holding_torque, self.driver.idle,
-        ))  # fmt: skip
+        return float(
+            power.bus_power(
+                speed,
+                self.shaft_torque(point),
+                self.voltage,
+                self.choice.peak,
+                self.resistance,
+                J.inductance,
+                self.K,
+                self.N,
+                J.holding_torque,
+                self.driver.idle,
+            )
+        )
 
     @property
     def rest_power(self) -> float:
         """[W]"""
-        return float(power.holding_power(
-            self.voltage, self.rest_current, self.resistance, self.driver.idle
-        ))  # fmt: skip
+        return float(
+            power.holding_power(self.voltage, self.rest_current, self.resistance, self.driver.idle)
+        )
 
     @cached_property
     def peak_power(self) -> float:
@@ -286,13 +314,32 @@ class AxisCase:
         found = [self.rest_power]
         for j in self.judged:
             pullout = torque.pullout_torque(
-                j.speed, power.SQUARE_WAVE * highest, I, self.resistance, J.inductance, self.K,
+                j.speed,
+                power.SQUARE_WAVE * highest,
+                I,
+                self.resistance,
+                J.inductance,
+                self.K,
                 self.N,
-            )  # fmt: skip
-            found.append(float(power.worst_power(
-                j.speed, self.shaft_torque(j.point), self.voltage, highest, I, self.resistance,
-                J.inductance, self.K, self.N, J.holding_torque, self.driver.idle, pullout,
-            )))  # fmt: skip
+            )
+            found.append(
+                float(
+                    power.worst_power(
+                        j.speed,
+                        self.shaft_torque(j.point),
+                        self.voltage,
+                        highest,
+                        I,
+                        self.resistance,
+                        J.inductance,
+                        self.K,
+                        self.N,
+                        J.holding_torque,
+                        self.driver.idle,
+                        pullout,
+                    )
+                )
+            )
         return max(found)
 
     # -- braking ----------------------------------------------------------------------------
@@ -315,10 +362,15 @@ class AxisCase:
     def lowering_power(self) -> float:
         """Largest power a steadily driven point returns. [W]"""
         driven = [p for p in self.axis.points if p.torque < 0 and p.speed > 0]
-        return max([0.0, *(
-            float(braking.lowering_power(p.speed, -p.torque, self.cold_resistance, self.K))
-            for p in driven
-        )])  # fmt: skip
+        return max(
+            [
+                0.0,
+                *(
+                    float(braking.lowering_power(p.speed, -p.torque, self.cold_resistance, self.K))
+                    for p in driven
+                ),
+            ]
+        )
 
 
 @dataclass(frozen=True)
@@ -348,9 +400,9 @@ class BusCase:
             motor = _found(catalogue.find("motors", choice.motor), choice.motor)
             driver = _found(catalogue.find("drivers", choice.driver), choice.driver)
             joining = _found(joining_of(choice, motor.ways), f"joining of {choice.axis}")
-            cases.append(AxisCase(
-                machine, axis, choice, motor, driver, joining, bus.voltage, spread
-            ))  # fmt: skip
+            cases.append(
+                AxisCase(machine, axis, choice, motor, driver, joining, bus.voltage, spread)
+            )
         return cls(problem, design, tuple(cases), unit, bus.count, bus.voltage)
 
     @property
@@ -411,10 +463,13 @@ class BusCase:
     @cached_property
     def peak_power(self) -> float:
         """Of the worst stage: here every axis at its peak at once. [W]"""
-        return max(
-            sum(case.peak_power for case in self.axes if case.axis.axis in stage.axes)
-            for stage in self.machine.stages
-        ) + self.machine.fixed_power  # fmt: skip
+        return (
+            max(
+                sum(case.peak_power for case in self.axes if case.axis.axis in stage.axes)
+                for stage in self.machine.stages
+            )
+            + self.machine.fixed_power
+        )
 
     @cached_property
     def returned_energy(self) -> float:

@@ -2,14 +2,7 @@
 
 from __future__ import annotations
 
-from ..domain.results import (
-    AxisFigures,
-    BusFigures,
-    ChainStep,
-    OrderLine,
-    Totals,
-    WorstPoint,
-)
+from ..domain.results import AxisFigures, BusFigures, ChainStep, OrderLine, Totals, WorstPoint
 from ..physics import braking, power, supply, thermal, torque
 from .cases import AxisCase, BusCase
 
@@ -27,17 +20,25 @@ def axis_figures(case: AxisCase) -> AxisFigures:
         axis=case.axis.axis,
         torque_headroom=worst.headroom,
         worst_point=WorstPoint(
-            point=name, speed=worst.speed, required_torque=worst.required,
+            point=name,
+            speed=worst.speed,
+            required_torque=worst.required,
             usable_torque=float(chain.usable),
         ),
         chain=(
             ChainStep(step="ideal motor", torque=float(chain.nominal), standing="derived"),
             ChainStep(step="model", torque=float(chain.modelled), standing="simulated"),
             ChainStep(step="tolerances", torque=float(chain.toleranced), standing="practice"),
-            ChainStep(step="detent", torque=float(chain.less_detent),
-                      standing="guess" if case.motor.detent_torque is None else "stated"),
-            ChainStep(step="damping", torque=float(chain.less_detent * chain.damping),
-                      standing="simulated" if case.axis.damping_ratio is not None else "guess"),
+            ChainStep(
+                step="detent",
+                torque=float(chain.less_detent),
+                standing="guess" if case.motor.detent_torque is None else "stated",
+            ),
+            ChainStep(
+                step="damping",
+                torque=float(chain.less_detent * chain.damping),
+                standing="simulated" if case.axis.damping_ratio is not None else "guess",
+            ),
             ChainStep(step="microsteps", torque=float(chain.usable), standing="guess"),
         ),
         voltage_share=float(chain.voltage_share),
@@ -56,7 +57,7 @@ def axis_figures(case: AxisCase) -> AxisFigures:
         start_stop_speed=_start_stop(case),
         resonance=_resonance(case),
         inertia_ratio=_inertia_ratio(case),
-    )  # fmt: skip
+    )
 
 
 def _resonance(case: AxisCase) -> float | None:
@@ -74,9 +75,14 @@ def _start_stop(case: AxisCase) -> float | None:
         torque.start_stop_speed(case.K, case.choice.peak, case.inertia, case.N, load)
     )
     share = torque.voltage_share(
-        speed, case.voltage, case.choice.peak, case.resistance, case.joined.inductance, case.K,
+        speed,
+        case.voltage,
+        case.choice.peak,
+        case.resistance,
+        case.joined.inductance,
+        case.K,
         case.N,
-    )  # fmt: skip
+    )
     return speed if share < START_SHARE else None
 
 
@@ -115,12 +121,18 @@ def order_lines(bus: BusCase) -> tuple[OrderLine, ...]:
     for kind, part, number in bus.parts.values():
         quantity = number * bus.machine.quantity
         price = None if part.price is None else part.price.amount
-        lines.append(OrderLine(
-            part=part.part, kind=kind, supplier=part.supplier, quantity=quantity,
-            stock=part.stock, lead_time=part.lead_time,
-            unit_price=None if price is None else float(price),
-            line_price=None if price is None else float(price * quantity),
-        ))  # fmt: skip
+        lines.append(
+            OrderLine(
+                part=part.part,
+                kind=kind,
+                supplier=part.supplier,
+                quantity=quantity,
+                stock=part.stock,
+                lead_time=part.lead_time,
+                unit_price=None if price is None else float(price),
+                line_price=None if price is None else float(price * quantity),
+            )
+        )
     return tuple(lines)
 
 

@@ -23,9 +23,15 @@ class Currents(NamedTuple):
 
 
 def phase_currents(
-    speed: Numbers, torque: Numbers, voltage: Numbers, current: Numbers, R: Numbers, L: Numbers,
-    K: Numbers, N: Numbers,
-) -> Currents:  # fmt: skip
+    speed: Numbers,
+    torque: Numbers,
+    voltage: Numbers,
+    current: Numbers,
+    R: Numbers,
+    L: Numbers,
+    K: Numbers,
+    N: Numbers,
+) -> Currents:
     r"""Current vector of a chopper that fills its setting while the bus lets it.
 
     Parameters
@@ -70,9 +76,15 @@ def phase_currents(
 
 
 def iron_loss(
-    speed: Numbers, i_d: Numbers, i_q: Numbers, holding_torque: Numbers, L: Numbers, K: Numbers,
-    N: Numbers, coefficient: Numbers = IRON_LOSS,
-) -> Numbers:  # fmt: skip
+    speed: Numbers,
+    i_d: Numbers,
+    i_q: Numbers,
+    holding_torque: Numbers,
+    L: Numbers,
+    K: Numbers,
+    N: Numbers,
+    coefficient: Numbers = IRON_LOSS,
+) -> Numbers:
     r"""Loss in the iron, which grows with electrical frequency and the square of flux.
 
     Parameters
@@ -133,10 +145,18 @@ def driver_loss(voltage: Numbers, current: Numbers, idle_power: Numbers) -> Numb
 
 
 def bus_power(
-    speed: Numbers, torque: Numbers, voltage: Numbers, current: Numbers, R: Numbers, L: Numbers,
-    K: Numbers, N: Numbers, holding_torque: Numbers, idle_power: Numbers,
+    speed: Numbers,
+    torque: Numbers,
+    voltage: Numbers,
+    current: Numbers,
+    R: Numbers,
+    L: Numbers,
+    K: Numbers,
+    N: Numbers,
+    holding_torque: Numbers,
+    idle_power: Numbers,
     iron_coefficient: Numbers = IRON_LOSS_HIGH,
-) -> Numbers:  # fmt: skip
+) -> Numbers:
     r"""Power one axis takes from the bus at a speed and torque; negative when it returns some.
 
     Parameters
@@ -201,10 +221,19 @@ def holding_power(voltage: Numbers, current: Numbers, R: Numbers, idle_power: Nu
 
 
 def worst_power(
-    speed: Numbers, torque: Numbers, voltage: Numbers, highest_voltage: Numbers, current: Numbers,
-    R: Numbers, L: Numbers, K: Numbers, N: Numbers, holding_torque: Numbers, idle_power: Numbers,
+    speed: Numbers,
+    torque: Numbers,
+    voltage: Numbers,
+    highest_voltage: Numbers,
+    current: Numbers,
+    R: Numbers,
+    L: Numbers,
+    K: Numbers,
+    N: Numbers,
+    holding_torque: Numbers,
+    idle_power: Numbers,
     pullout: Numbers,
-) -> Numbers:  # fmt: skip
+) -> Numbers:
     r"""Most an overloaded or jammed axis could draw at a speed: a note, not a rating.
 
     Parameters

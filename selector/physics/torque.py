@@ -162,9 +162,14 @@ def winding_resistance(resistance_25: Numbers, temperature: Numbers) -> Numbers:
 
 
 def voltage_share(
-    speed: Numbers, voltage: Numbers, current: Numbers, R: Numbers, L: Numbers, K: Numbers,
+    speed: Numbers,
+    voltage: Numbers,
+    current: Numbers,
+    R: Numbers,
+    L: Numbers,
+    K: Numbers,
     N: Numbers,
-) -> Numbers:  # fmt: skip
+) -> Numbers:
     r"""Voltage that full in-phase current asks for, as a share of the bus; 1 is the corner.
 
     Parameters
@@ -233,9 +238,14 @@ def corner_speed(
 
 
 def pullout_torque(
-    speed: Numbers, voltage: Numbers, current: Numbers, R: Numbers, L: Numbers, K: Numbers,
+    speed: Numbers,
+    voltage: Numbers,
+    current: Numbers,
+    R: Numbers,
+    L: Numbers,
+    K: Numbers,
     N: Numbers,
-) -> Numbers:  # fmt: skip
+) -> Numbers:
     r"""Largest steady torque with the current inside its setting and the voltage inside the bus.
 
     Ideal: no ripple, iron loss, saturation, detent or loss of damping; see :func:`torque_chain`.
@@ -304,9 +314,13 @@ def _short_of_voltage(
 
 
 def rippled_current(
-    speed: Numbers, voltage: Numbers, current: Numbers, L: Numbers, K: Numbers, regulator_time:
-    Numbers,
-) -> Numbers:  # fmt: skip
+    speed: Numbers,
+    voltage: Numbers,
+    current: Numbers,
+    L: Numbers,
+    K: Numbers,
+    regulator_time: Numbers,
+) -> Numbers:
     r"""Mean of a chopped current whose peak the regulator holds at its setting.
 
     Parameters
@@ -429,11 +443,21 @@ def judged_speeds(
 
 
 def torque_chain(
-    speed: Numbers, voltage: Numbers, current: Numbers, motor_resistance: Numbers,
-    bridge_resistance: Numbers, L: Numbers, K: Numbers, N: Numbers, regulator_time: Numbers,
-    detent_torque: Numbers, damping_ratio: Numbers, microsteps: Numbers, tolerances: Tolerances,
+    speed: Numbers,
+    voltage: Numbers,
+    current: Numbers,
+    motor_resistance: Numbers,
+    bridge_resistance: Numbers,
+    L: Numbers,
+    K: Numbers,
+    N: Numbers,
+    regulator_time: Numbers,
+    detent_torque: Numbers,
+    damping_ratio: Numbers,
+    microsteps: Numbers,
+    tolerances: Tolerances,
     combine: str = "combined",
-) -> TorqueChain:  # fmt: skip
+) -> TorqueChain:
     r"""Usable torque and every step on the way to it.
 
     Valid for microsteps of 1/8 and finer and unsaturated iron; measured curves should replace it.
@@ -481,9 +505,11 @@ def torque_chain(
     R = motor_resistance + bridge_resistance
 
     def modelled(
-        resistance: Numbers = R, inductance: Numbers = L, constant: Numbers = K, volts: Numbers =
-        voltage,
-    ) -> Numbers:  # fmt: skip
+        resistance: Numbers = R,
+        inductance: Numbers = L,
+        constant: Numbers = K,
+        volts: Numbers = voltage,
+    ) -> Numbers:
         mean = rippled_current(speed, volts, current, inductance, constant, regulator_time)
         return MODEL_FACTOR * pullout_torque(
             speed, volts, mean, resistance, inductance, constant, N
@@ -493,12 +519,13 @@ def torque_chain(
     x = modelled()
     tol = tolerances
     ends = {
-        "resistance": [motor_resistance * (1 + s * tol.resistance) + bridge_resistance
-                       for s in (-1, 1)],
+        "resistance": [
+            motor_resistance * (1 + s * tol.resistance) + bridge_resistance for s in (-1, 1)
+        ],
         "inductance": [L * (1 + s * tol.inductance) for s in (-1, 1)],
         "constant": [K * (1 + s * tol.torque) for s in (-1, 1)],
         "volts": [voltage * (1 + s * tol.voltage) for s in (-1, 1)],
-    }  # fmt: skip
+    }
     if combine == "combined":
         squares = 0.0
         for name, (low, high) in ends.items():

@@ -9,26 +9,63 @@ from ..domain.parts import Catalogue
 from ..domain.results import Answer, AxisChoice, AxisFigures, BusFigures, Judgement, NextSetting
 
 AXIS_UNITS = {
-    "winding_temperature": "degC", "winding_temperature_high": "degC", "case_temperature": "degC",
-    "peak_power": "W", "mean_power": "W", "rest_power": "W", "worst_power": "W",
-    "step_rate": "Hz", "returned_energy": "J", "rated_current": "A",
-    "start_stop_speed": "rad/s", "resonance": "Hz",
-}  # fmt: skip
+    "winding_temperature": "degC",
+    "winding_temperature_high": "degC",
+    "case_temperature": "degC",
+    "peak_power": "W",
+    "mean_power": "W",
+    "rest_power": "W",
+    "worst_power": "W",
+    "step_rate": "Hz",
+    "returned_energy": "J",
+    "rated_current": "A",
+    "start_stop_speed": "rad/s",
+    "resonance": "Hz",
+}
 BUS_UNITS = {
-    "mean_power": "W", "peak_power": "W", "worst_power": "W", "available_power": "W",
-    "highest_voltage": "V", "voltage_limit": "V", "returned_energy": "J", "capacitance": "F",
-    "needed_capacitance": "F", "rule_of_thumb_current": "A", "naive_current": "A",
-}  # fmt: skip
+    "mean_power": "W",
+    "peak_power": "W",
+    "worst_power": "W",
+    "available_power": "W",
+    "highest_voltage": "V",
+    "voltage_limit": "V",
+    "returned_energy": "J",
+    "capacitance": "F",
+    "needed_capacitance": "F",
+    "rule_of_thumb_current": "A",
+    "naive_current": "A",
+}
 PART_UNITS = {
-    "mass": "kg", "volume": "m^3", "frame": "m", "step_angle": "deg", "holding_torque": "N*m",
-    "rated_current": "A", "phase_resistance": "ohm", "phase_inductance": "H",
-    "rotor_inertia": "kg*m^2", "detent_torque": "N*m", "rated_rise": "K", "case_limit": "degC",
-    "shaft": "m", "max_step_rate": "Hz", "switch_resistance": "ohm", "idle_power": "W",
-    "off_time": "s", "current_loop_bandwidth": "Hz", "bus_capacitance": "F", "max_ambient": "degC",
-    "voltage": "V", "rated_power": "W", "peak_power": "W", "peak_time": "s", "inrush": "A",
-    "output_capacitance": "F", "largest_startup_capacitance": "F", "overvoltage_trip": "V",
+    "mass": "kg",
+    "volume": "m^3",
+    "frame": "m",
+    "step_angle": "deg",
+    "holding_torque": "N*m",
+    "rated_current": "A",
+    "phase_resistance": "ohm",
+    "phase_inductance": "H",
+    "rotor_inertia": "kg*m^2",
+    "detent_torque": "N*m",
+    "rated_rise": "K",
+    "case_limit": "degC",
+    "shaft": "m",
+    "max_step_rate": "Hz",
+    "switch_resistance": "ohm",
+    "idle_power": "W",
+    "off_time": "s",
+    "current_loop_bandwidth": "Hz",
+    "bus_capacitance": "F",
+    "max_ambient": "degC",
+    "voltage": "V",
+    "rated_power": "W",
+    "peak_power": "W",
+    "peak_time": "s",
+    "inrush": "A",
+    "output_capacitance": "F",
+    "largest_startup_capacitance": "F",
+    "overvoltage_trip": "V",
     "lead_time": "day",
-}  # fmt: skip
+}
 
 
 def quantity(value: float | None, unit: str) -> dict[str, Any] | None:
@@ -49,8 +86,15 @@ def answer_data(answer: Answer) -> dict[str, Any]:
     if judgement is not None:
         data |= judgement_data(judgement)
     else:
-        data |= {"totals": None, "axes": [], "buses": [], "findings": [], "order": [],
-                 "assumptions": [], "cautions": []}  # fmt: skip
+        data |= {
+            "totals": None,
+            "axes": [],
+            "buses": [],
+            "findings": [],
+            "order": [],
+            "assumptions": [],
+            "cautions": [],
+        }
     data["next_settings"] = [_next(row) for row in answer.next_settings]
     data["rejections"] = [row.model_dump() for row in answer.rejections]
     data["reasons"] = list(answer.reasons)
@@ -75,14 +119,16 @@ def judgement_data(judgement: Judgement) -> dict[str, Any]:
     chosen = zip(judgement.design.axes, judgement.axes, strict=True)
     return {
         "totals": {
-            "cost": quantity(totals.cost, currency), "volume": quantity(totals.volume, "m^3"),
+            "cost": quantity(totals.cost, currency),
+            "volume": quantity(totals.volume, "m^3"),
             "mass": quantity(totals.mass, "kg"),
         },
         "axes": [_axis(choice, figures) for choice, figures in chosen],
         "buses": [_bus(judgement, k, figures) for k, figures in enumerate(judgement.buses)],
         "findings": [finding.model_dump() for finding in judgement.findings],
         "order": [
-            line.model_dump() | {
+            line.model_dump()
+            | {
                 "lead_time": quantity(line.lead_time, "day"),
                 "unit_price": quantity(line.unit_price, currency),
                 "line_price": quantity(line.line_price, currency),
@@ -91,21 +137,26 @@ def judgement_data(judgement: Judgement) -> dict[str, Any]:
         ],
         "assumptions": [remark.model_dump() for remark in judgement.assumptions],
         "cautions": list(judgement.cautions),
-    }  # fmt: skip
+    }
 
 
 def _axis(choice: AxisChoice, figures: AxisFigures) -> dict[str, Any]:
     worst = figures.worst_point
     data: dict[str, Any] = {
-        "axis": choice.axis, "motor": choice.motor, "joining": choice.joining,
-        "reduction": choice.reduction, "driver": choice.driver,
+        "axis": choice.axis,
+        "motor": choice.motor,
+        "joining": choice.joining,
+        "reduction": choice.reduction,
+        "driver": choice.driver,
         "current_peak": quantity(choice.peak, "A"),
         "current_rms": quantity(choice.peak / 2**0.5, "A"),
         "rest_current_peak": quantity(figures.rest_current_peak, "A"),
-        "microsteps": figures.microsteps, "bus": 0,
+        "microsteps": figures.microsteps,
+        "bus": 0,
         "torque_headroom": figures.torque_headroom,
         "worst_point": {
-            "point": worst.point, "speed": quantity(worst.speed, "rad/s"),
+            "point": worst.point,
+            "speed": quantity(worst.speed, "rad/s"),
             "required_torque": quantity(worst.required_torque, "N*m"),
             "usable_torque": quantity(worst.usable_torque, "N*m"),
         },
@@ -113,28 +164,34 @@ def _axis(choice: AxisChoice, figures: AxisFigures) -> dict[str, Any]:
             {"step": s.step, "torque": quantity(s.torque, "N*m"), "standing": s.standing}
             for s in figures.chain
         ],
-        "voltage_share": figures.voltage_share, "inertia_ratio": figures.inertia_ratio,
-    }  # fmt: skip
+        "voltage_share": figures.voltage_share,
+        "inertia_ratio": figures.inertia_ratio,
+    }
     return data | {name: quantity(getattr(figures, name), u) for name, u in AXIS_UNITS.items()}
 
 
 def _bus(judgement: Judgement, number: int, figures: BusFigures) -> dict[str, Any]:
     bus = judgement.design.buses[number]
     data: dict[str, Any] = {
-        "voltage": quantity(bus.voltage, "V"), "supply": bus.supply, "count": bus.count,
+        "voltage": quantity(bus.voltage, "V"),
+        "supply": bus.supply,
+        "count": bus.count,
         "axes": list(bus.axes or (a.axis for a in judgement.design.axes)),
         "supply_headroom": figures.supply_headroom,
-    }  # fmt: skip
+    }
     return data | {name: quantity(getattr(figures, name), u) for name, u in BUS_UNITS.items()}
 
 
 def _next(row: NextSetting) -> dict[str, Any]:
     return {
-        "axis": row.axis, "current_peak": quantity(row.current_peak, "A"),
-        "torque_headroom": row.torque_headroom, "peak_power": quantity(row.peak_power, "W"),
+        "axis": row.axis,
+        "current_peak": quantity(row.current_peak, "A"),
+        "torque_headroom": row.torque_headroom,
+        "peak_power": quantity(row.peak_power, "W"),
         "winding_temperature": quantity(row.winding_temperature, "degC"),
-        "holds": row.holds, "breaks": row.breaks,
-    }  # fmt: skip
+        "holds": row.holds,
+        "breaks": row.breaks,
+    }
 
 
 def catalogue_data(catalogue: Catalogue) -> dict[str, Any]:

@@ -12,6 +12,7 @@ from rich.table import Table
 from rich.text import Text
 
 from .. import units
+from ..domain.fields import Money
 from ..domain.parts import Catalogue
 from ..domain.results import Answer, Finding, Judgement, Quantity, Rejection
 from ..errors import Fault
@@ -25,8 +26,14 @@ def console(stream: TextIO) -> Console:
     """A console of the report's width; colour only on a terminal that wants it."""
     plain = not stream.isatty() or "NO_COLOR" in os.environ
     width = WIDTH if not stream.isatty() else min(WIDTH, Console(file=stream).width)
-    return Console(file=stream, width=width, no_color=plain, highlight=False, soft_wrap=False,
-                   force_terminal=None if not plain else False)  # fmt: skip
+    return Console(
+        file=stream,
+        width=width,
+        no_color=plain,
+        highlight=False,
+        soft_wrap=False,
+        force_terminal=None if not plain else False,
+    )
 
 
 # -- pieces -----------------------------------------------------------------------------------
@@ -66,8 +73,14 @@ def figure(quantity: Quantity | None) -> str:
     if quantity is None:
         return "-"
     value, unit = quantity.value, quantity.unit
-    shown = {"rad/s": ("rpm", RPM), "m": ("mm", 1e3), "F": ("uF", 1e6), "m^3": ("dm^3", 1e3),
-             "1": ("", 1.0), "kg*m^2": ("g*cm^2", 1e7)}  # fmt: skip
+    shown = {
+        "rad/s": ("rpm", RPM),
+        "m": ("mm", 1e3),
+        "F": ("uF", 1e6),
+        "m^3": ("dm^3", 1e3),
+        "1": ("", 1.0),
+        "kg*m^2": ("g*cm^2", 1e7),
+    }
     if unit == "Hz" and value >= 1e4:
         return f"{value / 1e3:.4g} kHz"
     name, factor = shown.get(unit, (unit, 1.0))
@@ -149,9 +162,13 @@ def _print_judgement(judgement: Judgement, out: Console, answer: Answer | None) 
 def _print_states(judgement: Judgement, out: Console) -> None:
     """Rules that fail, then what is unknown, grouped, with what would settle it."""
     states = [finding.state for finding in judgement.findings]
-    counts = {state: states.count(state) for state in ("passes", "fails", "unknown")}  # type: ignore[arg-type]
-    out.print(Text(f"  {len(states)} findings: {counts['passes']} pass, {counts['fails']} fail, "
-                   f"{counts['unknown']} unknown"))  # fmt: skip
+    counts = {state: states.count(state) for state in ("passes", "fails", "unknown")}
+    out.print(
+        Text(
+            f"  {len(states)} findings: {counts['passes']} pass, {counts['fails']} fail, "
+            f"{counts['unknown']} unknown"
+        )
+    )
     for finding in judgement.findings:
         if finding.state == "fails":
             out.print(Text(f"  FAILS    {_finding(finding)}", style="bold"))
@@ -184,14 +201,22 @@ def _print_design(judgement: Judgement, out: Console) -> None:
     rows = []
     for choice, figures in zip(judgement.design.axes, judgement.axes, strict=True):
         motor = choice.motor + (f" ({choice.joining})" if choice.joining else "")
-        rows.append((
-            choice.axis, motor, choice.driver, f"{choice.peak:.3g} A",
-            f"{choice.peak / 2**0.5:.3g} A", f"{figures.rest_current_peak:.3g} A",
-            f"1/{figures.microsteps}",
-        ))  # fmt: skip
-    out.print(_table(
-        ("axis", "motor", "driver", "set, peak", "= RMS", "at rest, peak", "step"), rows, left=3
-    ))  # fmt: skip
+        rows.append(
+            (
+                choice.axis,
+                motor,
+                choice.driver,
+                f"{choice.peak:.3g} A",
+                f"{choice.peak / 2**0.5:.3g} A",
+                f"{figures.rest_current_peak:.3g} A",
+                f"1/{figures.microsteps}",
+            )
+        )
+    out.print(
+        _table(
+            ("axis", "motor", "driver", "set, peak", "= RMS", "at rest, peak", "step"), rows, left=3
+        )
+    )
     for bus in judgement.design.buses:
         unit = "no supply named" if bus.supply is None else f"{bus.count} x {bus.supply}"
         out.print(Text(f"  bus: {bus.voltage:g} V from {unit}, all axes"))
@@ -206,34 +231,62 @@ def _print_headrooms(judgement: Judgement, out: Console) -> None:
         heat = by_axis[figures.axis, "winding temperature"]
         hold = by_axis[figures.axis, "holding"]
         limit = "-" if heat.limit is None else f"{heat.limit.value:.0f}"
-        rows.append((
-            figures.axis, percent(figures.torque_headroom), f"{worst.required_torque:.3g}",
-            f"{worst.usable_torque:.3g}", f"{worst.speed * RPM:.0f}", worst.point,
-            percent(hold.headroom), heated(figures.winding_temperature),
-            heated(figures.winding_temperature_high), limit,
-            f"{figures.case_temperature:.0f}",
-        ))  # fmt: skip
-    out.print(_table(
-        ("axis", "torque", "needs N*m", "has N*m", "at rpm", "of", "holding", "winding",
-         "if lossy", "limit", "case"), rows
-    ))  # fmt: skip
-    for figures in judgement.buses:
-        out.print(Text(
-            f"  supply {percent(figures.supply_headroom)}; "
-            "20 % headroom is 83 % loading. Required figures contain no margin."
-        ))  # fmt: skip
+        rows.append(
+            (
+                figures.axis,
+                percent(figures.torque_headroom),
+                f"{worst.required_torque:.3g}",
+                f"{worst.usable_torque:.3g}",
+                f"{worst.speed * RPM:.0f}",
+                worst.point,
+                percent(hold.headroom),
+                heated(figures.winding_temperature),
+                heated(figures.winding_temperature_high),
+                limit,
+                f"{figures.case_temperature:.0f}",
+            )
+        )
+    out.print(
+        _table(
+            (
+                "axis",
+                "torque",
+                "needs N*m",
+                "has N*m",
+                "at rpm",
+                "of",
+                "holding",
+                "winding",
+                "if lossy",
+                "limit",
+                "case",
+            ),
+            rows,
+        )
+    )
+    for bus in judgement.buses:
+        out.print(
+            Text(
+                f"  supply {percent(bus.supply_headroom)}; "
+                "20 % headroom is 83 % loading. Required figures contain no margin."
+            )
+        )
 
 
 def _print_chain(judgement: Judgement, out: Console) -> None:
     _head(out, "torque from ideal to usable at that point, N*m")
     steps = [step.step for step in judgement.axes[0].chain]
     rows = [
-        (figures.axis, *(f"{step.torque:.3g}" for step in figures.chain),
-         f"{figures.chain[0].torque / figures.chain[-1].torque:.2f}"
-         if figures.chain[-1].torque > 0 else "-",
-         f"{figures.voltage_share:.2f}")
+        (
+            figures.axis,
+            *(f"{step.torque:.3g}" for step in figures.chain),
+            f"{figures.chain[0].torque / figures.chain[-1].torque:.2f}"
+            if figures.chain[-1].torque > 0
+            else "-",
+            f"{figures.voltage_share:.2f}",
+        )
         for figures in judgement.axes
-    ]  # fmt: skip
+    ]
     names = ["ideal", *(f"- {name}" for name in steps[1:])]
     out.print(_table(("axis", *names, "factor", "V share"), rows))
 
@@ -243,8 +296,9 @@ def _print_load(judgement: Judgement, out: Console) -> None:
         _head(out, f"load of the {bus.voltage:g} V supply")
         available = figures.available_power
 
-        def row(name: str, watts: float, volts: float = bus.voltage,
-                has: float | None = available) -> tuple[str, ...]:  # fmt: skip
+        def row(
+            name: str, watts: float, volts: float = bus.voltage, has: float | None = available
+        ) -> tuple[str, ...]:
             return (
                 name,
                 f"{watts:.0f} W",
@@ -272,20 +326,27 @@ def _print_braking(judgement: Judgement, out: Console) -> None:
     for figures in judgement.buses:
         risen = figures.highest_voltage
         shown = "without limit" if risen is None else f"to {risen:.1f} V"
-        out.print(Text(
-            f"  {figures.returned_energy:.3g} J into {1e6 * figures.capacitance:.0f} uF lift the "
-            f"bus {shown}; limit {figures.voltage_limit:.1f} V"
-        ))  # fmt: skip
+        out.print(
+            Text(
+                f"  {figures.returned_energy:.3g} J into {1e6 * figures.capacitance:.0f} uF lift "
+                f"the bus {shown}; limit {figures.voltage_limit:.1f} V"
+            )
+        )
 
 
 def _print_next(answer: Answer, out: Console) -> None:
     _head(out, "the next higher setting of each driver would give")
     rows = [
-        (row.axis, f"{row.current_peak:.3g} A", percent(row.torque_headroom),
-         f"{row.peak_power:.0f} W", f"{row.winding_temperature:.0f} degC",
-         "all rules hold" if row.holds else f"breaks: {row.breaks}")
+        (
+            row.axis,
+            f"{row.current_peak:.3g} A",
+            percent(row.torque_headroom),
+            f"{row.peak_power:.0f} W",
+            f"{row.winding_temperature:.0f} degC",
+            "all rules hold" if row.holds else f"breaks: {row.breaks}",
+        )
         for row in answer.next_settings
-    ]  # fmt: skip
+    ]
     out.print(_table(("axis", "peak", "torque", "peak power", "winding", "then"), rows))
 
 
@@ -296,11 +357,21 @@ def _print_order(judgement: Judgement, out: Console) -> None:
     for line in judgement.order:
         stock = "unknown" if line.stock is None else str(line.stock)
         lead = "-" if line.lead_time is None else f"{line.lead_time:g} d"
-        rows.append((line.part, line.kind, line.supplier or "-", str(line.quantity), stock, lead,
-                     money(line.unit_price, currency), money(line.line_price, currency)))  # fmt: skip
-    out.print(_table(
-        ("part", "", "from", "number", "stock", "lead", "each", "price"), rows, left=3
-    ))  # fmt: skip
+        rows.append(
+            (
+                line.part,
+                line.kind,
+                line.supplier or "-",
+                str(line.quantity),
+                stock,
+                lead,
+                money(line.unit_price, currency),
+                money(line.line_price, currency),
+            )
+        )
+    out.print(
+        _table(("part", "", "from", "number", "stock", "lead", "each", "price"), rows, left=3)
+    )
     totals = judgement.totals
     volume = "-" if totals.volume is None else f"{1000 * totals.volume:.3g} dm^3"
     mass = "-" if totals.mass is None else f"{totals.mass:.3g} kg"
@@ -318,8 +389,9 @@ def _print_proof(answer: Answer, out: Console) -> None:
         f"{proof.solves} solves by CP-SAT; the judge recomputed the design without the search.",
     ]
     if answer.verdict == "proved":
-        rows.append("Proved: no choice from this catalogue does better, by this model and list of "
-                    "voltages.")  # fmt: skip
+        rows.append(
+            "Proved: no choice from this catalogue does better, by this model and list of voltages."
+        )
     else:
         gap = (
             "no bound is known" if proof.gap is None else f"at most {percent(proof.gap, 1)} better"
@@ -364,8 +436,13 @@ def _print_none(answer: Answer, out: Console) -> None:
     rows = [row for row in answer.rejections if not stuck & _axes(answer) or row.axis in stuck]
     if rows:
         _head(out, "options turned away, by the first rule each breaks")
-        out.print(_table(("axis", "rule", "options", "needs", "has", "nearest miss"),
-                         [_rejection(row) for row in rows], left=2))  # fmt: skip
+        out.print(
+            _table(
+                ("axis", "rule", "options", "needs", "has", "nearest miss"),
+                [_rejection(row) for row in rows],
+                left=2,
+            )
+        )
     _head(out, "how we know")
     _lines(out, [f"Second route: {answer.proof.second_route}.", *_exclusions(answer)])
 
@@ -389,36 +466,78 @@ def print_catalogue(catalogue: Catalogue, path: str, stream: TextIO) -> None:
     )
     out.print(Text(f"{path}: {counts}, no faults", style="bold"))
     _head(out, "motors")
-    out.print(_table(
-        ("part", "frame", "torque", "current", "phase", "inductance", "inertia", "wires", "price",
-         "stock"),
-        [(m.part, units.write("length", m.frame, "mm"), f"{m.holding_torque:.3g} N*m",
-          f"{m.rated_current:g} A", f"{m.phase_resistance:.3g} ohm",
-          f"{1e3 * m.phase_inductance:.3g} mH",
-          "-" if m.rotor_inertia is None else f"{1e7 * m.rotor_inertia:.3g} g*cm^2",
-          str(m.wires), _price(m.price), _stock(m.stock)) for m in catalogue.motors],
-    ))  # fmt: skip
+    out.print(
+        _table(
+            (
+                "part",
+                "frame",
+                "torque",
+                "current",
+                "phase",
+                "inductance",
+                "inertia",
+                "wires",
+                "price",
+                "stock",
+            ),
+            [
+                (
+                    m.part,
+                    units.write("length", m.frame, "mm"),
+                    f"{m.holding_torque:.3g} N*m",
+                    f"{m.rated_current:g} A",
+                    f"{m.phase_resistance:.3g} ohm",
+                    f"{1e3 * m.phase_inductance:.3g} mH",
+                    "-" if m.rotor_inertia is None else f"{1e7 * m.rotor_inertia:.3g} g*cm^2",
+                    str(m.wires),
+                    _price(m.price),
+                    _stock(m.stock),
+                )
+                for m in catalogue.motors
+            ],
+        )
+    )
     _head(out, "drivers")
-    out.print(_table(
-        ("part", "voltage", "settings, peak", "finest step", "motors", "price", "stock"),
-        [(d.part, f"{d.supply_voltage.min:g}-{d.supply_voltage.max:g} V",
-          f"{d.peak_settings[0]:.3g}-{d.peak_settings[-1]:.3g} A", f"1/{max(d.microsteps)}",
-          str(d.channels), _price(d.price), _stock(d.stock)) for d in catalogue.drivers],
-    ))  # fmt: skip
+    out.print(
+        _table(
+            ("part", "voltage", "settings, peak", "finest step", "motors", "price", "stock"),
+            [
+                (
+                    d.part,
+                    f"{d.supply_voltage.min:g}-{d.supply_voltage.max:g} V",
+                    f"{d.peak_settings[0]:.3g}-{d.peak_settings[-1]:.3g} A",
+                    f"1/{max(d.microsteps)}",
+                    str(d.channels),
+                    _price(d.price),
+                    _stock(d.stock),
+                )
+                for d in catalogue.drivers
+            ],
+        )
+    )
     _head(out, "supplies")
-    out.print(_table(
-        ("part", "voltage", "trim", "power", "current", "units", "price", "stock"),
-        [(s.part, f"{s.voltage:g} V", f"{s.trim.min:g}-{s.trim.max:g} V" if s.trim else "-",
-          f"{s.power:g} W", f"{s.current:.3g} A", str(s.parallel), _price(s.price),
-          _stock(s.stock)) for s in catalogue.supplies],
-    ))  # fmt: skip
+    out.print(
+        _table(
+            ("part", "voltage", "trim", "power", "current", "units", "price", "stock"),
+            [
+                (
+                    s.part,
+                    f"{s.voltage:g} V",
+                    f"{s.trim.min:g}-{s.trim.max:g} V" if s.trim else "-",
+                    f"{s.power:g} W",
+                    f"{s.current:.3g} A",
+                    str(s.parallel),
+                    _price(s.price),
+                    _stock(s.stock),
+                )
+                for s in catalogue.supplies
+            ],
+        )
+    )
 
 
-def _price(price: object) -> str:
-    if price is None:
-        return "-"
-    amount, currency = price  # type: ignore[misc]
-    return f"{amount} {currency or ''}".strip()
+def _price(price: Money | None) -> str:
+    return "-" if price is None else f"{price.amount} {price.currency or ''}".strip()
 
 
 def _stock(stock: int | None) -> str:

@@ -93,11 +93,17 @@ class Bounds:
         cells = []
         for level in np.flatnonzero(self.exists[rail] & np.isfinite(whole).all(axis=0)):
             best = int(np.argmax(whole[:, level]))
-            cells.append(CellBound(
-                rail, int(level), float(whole[best, level]), watt[best], joule[best],
-                {key: float(floor[best, level]) for key, floor in axes.items()},
-                float(feed[best, level]),
-            ))  # fmt: skip
+            cells.append(
+                CellBound(
+                    rail,
+                    int(level),
+                    float(whole[best, level]),
+                    watt[best],
+                    joule[best],
+                    {key: float(floor[best, level]) for key, floor in axes.items()},
+                    float(feed[best, level]),
+                )
+            )
         return cells
 
     def _axis_floors(self, table: AxisTable, rail: int, watt: Array, joule: Array) -> Array:

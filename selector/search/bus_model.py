@@ -13,6 +13,7 @@ from typing import Any
 
 import numpy as np
 
+from ..domain.parts import Part
 from ..physics.braking import CAPACITOR_SHARE
 from .candidates import Options
 from .model import Model
@@ -32,9 +33,7 @@ from .offers import (
 from .reduce import by_stock, undominated
 
 Array = Any
-SUPPLY, BRAKING, STOCK, STARTUP = (
-    "supply power", "braking rise", "stock", "start-up capacitance",
-)  # fmt: skip
+SUPPLY, BRAKING, STOCK, STARTUP = ("supply power", "braking rise", "stock", "start-up capacitance")
 LIMITS = ("the price limit", "the volume limit", "the mass limit")
 RULES = (SUPPLY, BRAKING, STOCK, STARTUP, *LIMITS)
 UNLIMITED = 2**50
@@ -62,9 +61,13 @@ class Choice:
         t = offers.tables
         power = sum(int(up(o.mean, POWER_SCALE)[0]) for o in self.options)
         names = [
-            (int(t["winding_place"][o.winding[0]]), int(t["driver_place"][o.driver[0]]),
-             float(o.setting[0])) for o in self.options
-        ]  # fmt: skip
+            (
+                int(t["winding_place"][o.winding[0]]),
+                int(t["driver_place"][o.driver[0]]),
+                float(o.setting[0]),
+            )
+            for o in self.options
+        ]
         feed = self.feed
         volts = offers.rails[feed.rail].voltage
         return (*self.values, feed.trimmed, power, volts, names, feed.supply.part, feed.count)
@@ -112,17 +115,23 @@ def reduced_options(offers: Offers, options: Options, startup: bool) -> Options:
     """
     t = offers.tables
     place = (
-        options.setting, t["driver_place"][options.driver], t["winding_place"][options.winding]
-    )  # fmt: skip
+        options.setting,
+        t["driver_place"][options.driver],
+        t["winding_place"][options.winding],
+    )
     options = options.pick(np.lexsort(place))
     goals = t["winding_goals"][options.winding] + t["driver_goals"][options.driver]
     key = np.column_stack([goals, up(options.mean, POWER_SCALE)])
     held = down(t["C"][options.driver], CAPACITANCE_SCALE * 1000)
-    others = np.column_stack([
-        t["winding_amounts"][options.winding] + t["driver_amounts"][options.driver],
-        up(options.peak, POWER_SCALE), up(options.energy, ENERGY_SCALE),
-        -held, held if startup else np.zeros_like(held),
-    ])  # fmt: skip
+    others = np.column_stack(
+        [
+            t["winding_amounts"][options.winding] + t["driver_amounts"][options.driver],
+            up(options.peak, POWER_SCALE),
+            up(options.energy, ENERGY_SCALE),
+            -held,
+            held if startup else np.zeros_like(held),
+        ]
+    )
     motor = t["motor"][options.winding]
     stands_in = by_stock(motor, options.driver, t["ample_motor"], t["ample_driver"])
     return options.pick(undominated(key, others, stands_in))
@@ -145,10 +154,10 @@ class BusModel:
         self.feed_numbers = [self.model.add_group(len(bus.feeds)) for bus in buses]
         self.complete = all(self.model.groups)
         if self.complete:
-            for bus in range(len(buses)):
-                self._supply_rows(bus)
-                self._startup_row(bus)
-                self._braking_rows(bus)
+            for number in range(len(buses)):
+                self._supply_rows(number)
+                self._startup_row(number)
+                self._braking_rows(number)
             self._stock_rows()
             self._limit_rows()
         self.goals = [self._goal(k) for k in range(len(offers.goals))]
@@ -164,14 +173,6 @@ class BusModel:
     def _over_feeds(self, figure: Callable[[Feed], int], bus: int) -> dict[int, int]:
         pairs = zip(self.feed_numbers[bus], self.buses[bus].feeds, strict=True)
         return {number: figure(feed) for number, feed in pairs}
-
-    def _over_all(
-        self, axes: Callable[[Options], Array], feeds: Callable[[Feed], int]
-    ) -> dict[int, int]:
-        terms: dict[int, int] = {}
-        for bus in range(len(self.buses)):
-            terms |= self._over_axes(axes, bus) | self._over_feeds(feeds, bus)
-        return terms
 
     # -- rows -------------------------------------------------------------------------------
 
@@ -218,9 +219,11 @@ class BusModel:
                 classes.setdefault(room, {})[number] = feed
         for room, feeds in classes.items():
             own = down(room * self.offers.tables["C"], ENERGY_SCALE)
-            terms = self._over_axes(
-                lambda o, own=own: up(o.energy, ENERGY_SCALE) - own[o.driver], bus
-            )
+
+            def beyond(o: Options, own: Array = own) -> Array:
+                return up(o.energy, ENERGY_SCALE) - own[o.driver]
+
+            terms = self._over_axes(beyond, bus)
             most = sum(
                 max([0, *(terms[n] for n in numbers.tolist())]) for numbers in self.numbers[bus]
             )
@@ -232,44 +235,47 @@ class BusModel:
 
     def _stock_rows(self) -> None:
         """Stock of each motor and driver over all buses, where it can run out."""
-        t, offers, quantity = self.offers.tables, self.offers, self.machine.quantity
-        motors = dict(zip(t["motor"].tolist(), (w.motor for w in offers.windings), strict=True))
-        for parts, number_of in (
-            (motors, lambda o: t["motor"][o.winding]),
-            (dict(enumerate(offers.drivers)), lambda o: o.driver),
-        ):
-            for number, part in parts.items():
-                stock = part.stock
-                if stock is None or stock >= quantity * len(self.machine.axes):
-                    continue
-                used: dict[int, int] = {}
-                for bus in range(len(self.buses)):
-                    used |= self._over_axes(
-                        lambda o, n=number, of=number_of: quantity * (of(o) == n), bus
-                    )
-                self.model.add_row(used, stock, None, STOCK)
+        t, drivers = self.offers.tables, self.offers.drivers
+        motors = zip(t["motor"].tolist(), (w.motor for w in self.offers.windings), strict=True)
+        for number, motor in sorted(dict(motors).items()):
+            self._stock_row(motor.stock, lambda o, n=number: t["motor"][o.winding] == n)  # type: ignore[misc]
+        for number, driver in enumerate(drivers):
+            self._stock_row(driver.stock, lambda o, n=number: o.driver == n)  # type: ignore[misc]
+
+    def _stock_row(self, stock: int | None, uses: Callable[[Options], Array]) -> None:
+        quantity = self.machine.quantity
+        if stock is not None and stock < quantity * len(self.machine.axes):
+            used: dict[int, int] = {}
+            for bus in range(len(self.buses)):
+                used |= self._over_axes(lambda o: quantity * uses(o), bus)
+            self.model.add_row(used, stock, None, STOCK)
 
     def _limit_rows(self) -> None:
-        limits, t = self.machine.limits, self.offers.tables
+        limits = self.machine.limits
         price = None if limits.price is None else float(limits.price.amount)
         bounds = ((price, MONEY_SCALE), (limits.volume, VOLUME_SCALE), (limits.mass, MASS_SCALE))
         for k, (limit, scale) in enumerate(bounds):
             if limit is not None:
-                motors, drivers = t["winding_amounts"][:, k], t["driver_amounts"][:, k]
-                terms = self._over_all(
-                    lambda o, m=motors, d=drivers: m[o.winding] + d[o.driver],
-                    lambda f, amount=AMOUNTS[k]: f.count * amount(f.supply),
-                )
+                amounts = "winding_amounts", "driver_amounts"
+                terms = self._summed(*amounts, k, AMOUNTS[k])
                 self.model.add_row(terms, int(down(limit, scale)), None, LIMITS[k])
+
+    def _summed(
+        self, windings: str, drivers: str, column: int, of: Callable[[Part], int]
+    ) -> dict[int, int]:
+        """Terms of a figure that adds up over parts: a column of two tables, and the supplies'."""
+        motor = self.offers.tables[windings][:, column]
+        driver = self.offers.tables[drivers][:, column]
+        terms: dict[int, int] = {}
+        for bus in range(len(self.buses)):
+            terms |= self._over_axes(lambda o: motor[o.winding] + driver[o.driver], bus)
+            terms |= self._over_feeds(lambda f: f.count * of(f.supply), bus)
+        return terms
 
     # -- goals and ties ---------------------------------------------------------------------
 
     def _goal(self, k: int) -> dict[int, int]:
-        t, goal = self.offers.tables, self.offers.goals[k]
-        motors, drivers = t["winding_goals"][:, k], t["driver_goals"][:, k]
-        return self._over_all(
-            lambda o: motors[o.winding] + drivers[o.driver], lambda f: f.count * goal.of(f.supply)
-        )
+        return self._summed("winding_goals", "driver_goals", k, self.offers.goals[k].of)
 
     def ties(self) -> Iterator[dict[int, int]]:
         """What orders equals at one voltage: trims and mean power, then names, a few at a time."""
@@ -320,8 +326,8 @@ class BusModel:
             options.pick(np.flatnonzero(np.isin(numbers, taken)))
             for numbers, options in zip(self.numbers[0], self.buses[0].options, strict=True)
         ]
-        feed = self.buses[0].feeds[next(
-            k for k, n in enumerate(self.feed_numbers[0]) if n in set(taken)
-        )]  # fmt: skip
+        feed = self.buses[0].feeds[
+            next(k for k, n in enumerate(self.feed_numbers[0]) if n in set(taken))
+        ]
         values = [sum(goal.get(n, 0) for n in taken) for goal in self.goals]
         return Choice(rows, feed, values)

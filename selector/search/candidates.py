@@ -26,10 +26,17 @@ GUARD = 1e-9  # the search asks this much more than the judge, so float dust nev
 CHUNK = 6000
 AHEAD = 4  # settings of a row judged at once after the first: fewer, larger arrays
 RULES = {
-    "frame": "m", "rotor inertia": "kg*m^2", "step rate": "Hz", "driver voltage": "V",
-    "current setting": "A", "speed": "rad/s", "rest current": "A", "holding": "N*m", "winding temperature": "degC",
+    "frame": "m",
+    "rotor inertia": "kg*m^2",
+    "step rate": "Hz",
+    "driver voltage": "V",
+    "current setting": "A",
+    "speed": "rad/s",
+    "rest current": "A",
+    "holding": "N*m",
+    "winding temperature": "degC",
     "torque": "N*m",
-}  # fmt: skip
+}
 
 
 @dataclass
@@ -110,8 +117,8 @@ class AxisTable:
     reaches: Array = field(init=False)  # winding × driver × rail: could reach every point
     judged: Array = field(init=False)  # winding × driver × rail
     at_rail: dict[int, Options] = field(init=False)  # adequate options by rail
-    # Least power of a pair at a rail: a floor until it is judged, then that of its adequate options,
-    # infinite where there are none.
+    # Least power of a pair at a rail: a floor until it is judged, then that of its adequate
+    # options, infinite where there are none.
     power: Array = field(init=False)
     misses: dict[str, Miss] = field(init=False)
     tried: int = 0
@@ -156,16 +163,25 @@ class AxisTable:
             for count in np.unique(teeth):
                 rows = teeth == count
                 fitting, rate = finest_microsteps(
-                    axis.top_speed, float(count), driver.microsteps,
-                    driver.max_step_rate, offers.problem.machine.limits.step_rate,
-                )  # fmt: skip
+                    axis.top_speed,
+                    float(count),
+                    driver.microsteps,
+                    driver.max_step_rate,
+                    offers.problem.machine.limits.step_rate,
+                )
                 self.microsteps[rows, d] = fitting
                 if fitting == 0:
                     failed = int((possible[:, d] & rows).sum())
                     possible[rows, d] = False
-                    limit = min(r for r in (driver.max_step_rate,
-                                            offers.problem.machine.limits.step_rate, np.inf)
-                                if r is not None)  # fmt: skip
+                    limit = min(
+                        r
+                        for r in (
+                            driver.max_step_rate,
+                            offers.problem.machine.limits.step_rate,
+                            np.inf,
+                        )
+                        if r is not None
+                    )
                     best = None if not np.isfinite(limit) else limit
                     miss = 1e9 if best is None else rate / best
                     if failed:
@@ -263,8 +279,9 @@ class AxisTable:
         ratio = least[w] / np.maximum(top, 1e-12)
         k = int(np.argmin(ratio))
         label = f"{self.offers.windings[w[k]].label} with {self.offers.drivers[d[k]].part}"
-        self._miss("current setting", len(w), label, float(least[w[k]]), float(top[k]),
-                   float(ratio[k]))  # fmt: skip
+        self._miss(
+            "current setting", len(w), label, float(least[w[k]]), float(top[k]), float(ratio[k])
+        )
 
     def _setting(self, winding: Array, driver: Array, rank: Array) -> Array:
         """Setting of that rank, NaN where the driver has none or the motor may not take it."""
@@ -274,9 +291,14 @@ class AxisTable:
         return np.where((rank < longest) & (setting <= most), setting, np.nan)
 
     def _miss(
-        self, rule: str, count: int, label: str, needs: float | None, best: float | None,
+        self,
+        rule: str,
+        count: int,
+        label: str,
+        needs: float | None,
+        best: float | None,
         ratio: float,
-    ) -> None:  # fmt: skip
+    ) -> None:
         miss = self.misses[rule]
         miss.count += count
         if ratio < miss.ratio:
@@ -291,8 +313,16 @@ class AxisTable:
                     None if v is None else Quantity(value=float(v), unit=RULES[rule])
                     for v in (miss.needs, miss.best)
                 )
-                rows.append(Rejection(axis=self.axis.axis, rule=rule, count=miss.count,
-                                      needs=needs, best=best, nearest=miss.label))  # fmt: skip
+                rows.append(
+                    Rejection(
+                        axis=self.axis.axis,
+                        rule=rule,
+                        count=miss.count,
+                        needs=needs,
+                        best=best,
+                        nearest=miss.label,
+                    )
+                )
         return rows
 
     def judge(self, wanted: Array) -> None:
@@ -464,9 +494,15 @@ class _Judged:
     def currents(self, point: Point, R: Array, rows: Array) -> power.Currents:
         asked = self.signed_torque(point)[rows]
         return power.phase_currents(
-            point.speed, asked, self.V[rows], self.I[rows], R,
-            self.L[rows], self.K[rows], self.N[rows],
-        )  # fmt: skip
+            point.speed,
+            asked,
+            self.V[rows],
+            self.I[rows],
+            R,
+            self.L[rows],
+            self.K[rows],
+            self.N[rows],
+        )
 
     def signed_torque(self, point: Point) -> Array:
         inertia = self.J + (self.axis.load_inertia or 0.0)
@@ -508,9 +544,15 @@ class _Judged:
                 i_d, i_q = self.currents(point, R, rows)
                 copper += share * self.R_25[rows] * (i_d**2 + i_q**2)
                 iron += share * power.iron_loss(
-                    point.speed, i_d, i_q, self.T_h[rows], self.L[rows], self.K[rows],
-                    self.N[rows], power.IRON_LOSS_LOW,
-                )  # fmt: skip
+                    point.speed,
+                    i_d,
+                    i_q,
+                    self.T_h[rows],
+                    self.L[rows],
+                    self.K[rows],
+                    self.N[rows],
+                    power.IRON_LOSS_LOW,
+                )
             before = temperature
             temperature = thermal.steady_temperature(self.machine.ambient, to_air, copper, iron)
             if np.max(np.abs(temperature - before), initial=0.0) < 1e-8:
@@ -563,10 +605,21 @@ class _Judged:
         )
         warm = torque.winding_resistance(self.R_25[rows], self.temperature[rows])
         return torque.torque_chain(
-            speeds, self.V[rows], self.I[rows], warm, self.R_b[rows], self.L[rows], self.K[rows],
-            self.N[rows], self.t_r[rows], self.detent[rows], self.damping[rows],
-            self.microsteps[rows], widths, combine,
-        ).usable  # fmt: skip
+            speeds,
+            self.V[rows],
+            self.I[rows],
+            warm,
+            self.R_b[rows],
+            self.L[rows],
+            self.K[rows],
+            self.N[rows],
+            self.t_r[rows],
+            self.detent[rows],
+            self.damping[rows],
+            self.microsteps[rows],
+            widths,
+            combine,
+        ).usable
 
     def options(self) -> Options:
         """The adequate rows with their power and returned energy."""
@@ -579,14 +632,28 @@ class _Judged:
         for point in self.axis.points:
             for speed in self.speeds(point, rows):
                 at = power.bus_power(
-                    speed, self.signed_torque(point)[rows], self.V[rows], self.I[rows], R,
-                    self.L[rows], self.K[rows], self.N[rows], self.T_h[rows], self.idle[rows],
-                )  # fmt: skip
+                    speed,
+                    self.signed_torque(point)[rows],
+                    self.V[rows],
+                    self.I[rows],
+                    R,
+                    self.L[rows],
+                    self.K[rows],
+                    self.N[rows],
+                    self.T_h[rows],
+                    self.idle[rows],
+                )
                 peak = np.maximum(peak, at)
             mean = mean + (point.share or 0.0) * np.maximum(at, 0.0)
         picked = self.rows.pick(rows)
         return Options(
-            picked.winding, picked.driver, picked.rail, self.I[rows], self.rest_share[rows],
-            self.microsteps[rows], peak, mean if self.axis.has_duty else peak,
+            picked.winding,
+            picked.driver,
+            picked.rail,
+            self.I[rows],
+            self.rest_share[rows],
+            self.microsteps[rows],
+            peak,
+            mean if self.axis.has_duty else peak,
             self.table.energy[picked.winding, picked.driver],
-        )  # fmt: skip
+        )

@@ -29,7 +29,8 @@ from .offers import Offers, offers_of
 
 Array = Any
 BATCH = 24  # rails judged at once
-GUESS = 1.08  # how far above the least bound the first goal is guessed, step by step
+GUESS = 0.06  # how far above the least bound the first goal is guessed, step by step
+PATIENCE = 10  # steps before they double: a machine without any design must not take for ever
 Progress = Callable[[str], None]
 
 
@@ -103,9 +104,10 @@ class _Search:
 
     def _nothing_offered(self) -> None:
         for name, offered in (
-            ("motor", self.offers.windings), ("driver", self.offers.drivers),
+            ("motor", self.offers.windings),
+            ("driver", self.offers.drivers),
             ("supply voltage", self.offers.feeds),
-        ):  # fmt: skip
+        ):
             if not offered:
                 self.result.reasons.append(f"no {name} is left that may be chosen")
         self.result.second_route = "nothing is on offer, so nothing can be chosen"
@@ -123,8 +125,8 @@ class _Search:
         self.judged_to = np.full(len(rails), -np.inf)
         heap = [(min(c.floor for c in at), rail) for rail, at in self.cells.items() if at]
         heapq.heapify(heap)
-        step = GUESS
-        guess = heap[0][0] * step if heap else np.inf
+        step, raises = GUESS, 0
+        guess = heap[0][0] * (1.0 + step) if heap else np.inf
         highest = len(self.tables) * float(self.bounds.pair_goal.max()) + float(
             self.bounds.feed_goal.max()
         )
@@ -135,8 +137,10 @@ class _Search:
             if heap[0][0] > min(guess, self.ceiling):
                 if heap[0][0] > self.ceiling:
                     return
-                guess = max(guess, heap[0][0]) * step + 1.0
-                guess, step = (guess, 2.0 * step - 1.0) if guess < highest else (np.inf, step)
+                guess = max(guess, heap[0][0]) * (1.0 + step) + 1.0
+                raises += 1
+                step = step if raises < PATIENCE else 2.0 * step
+                guess = guess if guess < highest else np.inf
             ceiling = min(guess, self.ceiling)
             batch = [heapq.heappop(heap)[1]]
             if self.judged_to[batch[0]] >= ceiling:
@@ -280,9 +284,10 @@ class _Search:
 
     def _confirm_none(self) -> None:
         names = [
-            axis.axis for axis, table in zip(self.machine.axes, self.tables, strict=True)
+            axis.axis
+            for axis, table in zip(self.machine.axes, self.tables, strict=True)
             if not any(len(o) for o in table.at_rail.values())
-        ]  # fmt: skip
+        ]
         if names:
             self.result.second_route = (
                 "every option of the axis was judged by itself, at every voltage on offer"
@@ -331,15 +336,21 @@ def design_of(result: Result) -> Design | None:
     for axis, option in zip(machine.axes, choice.options, strict=True):
         winding = offers.windings[option.winding[0]]
         setting = float(option.setting[0])
-        axes.append(AxisChoice(
-            axis=axis.axis, motor=winding.motor.part,
-            driver=offers.drivers[option.driver[0]].part,
-            joining=None if winding.joining == AS_WOUND else winding.joining,
-            current_peak=setting, rest_current_peak=setting * float(option.rest_share[0]),
-            microsteps=int(option.microsteps[0]),
-        ))  # fmt: skip
+        axes.append(
+            AxisChoice(
+                axis=axis.axis,
+                motor=winding.motor.part,
+                driver=offers.drivers[option.driver[0]].part,
+                joining=None if winding.joining == AS_WOUND else winding.joining,
+                current_peak=setting,
+                rest_current_peak=setting * float(option.rest_share[0]),
+                microsteps=int(option.microsteps[0]),
+            )
+        )
     bus = BusChoice(
-        voltage=offers.rails[choice.feed.rail].voltage, supply=choice.feed.supply.part,
-        count=choice.feed.count, axes=tuple(a.axis for a in machine.axes),
-    )  # fmt: skip
+        voltage=offers.rails[choice.feed.rail].voltage,
+        supply=choice.feed.supply.part,
+        count=choice.feed.count,
+        axes=tuple(a.axis for a in machine.axes),
+    )
     return Design(machine=offers.problem.machine_file, axes=tuple(axes), buses=(bus,))

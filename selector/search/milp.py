@@ -13,6 +13,7 @@ def minimise(model: Model, objective: Mapping[int, int]) -> Outcome:
     from scipy.optimize import Bounds, LinearConstraint, milp
     from scipy.sparse import csr_array
 
+    rows: list[tuple[dict[int, int], int | None, int | None]]
     rows = [(dict.fromkeys(group, 1), 1, 1) for group in model.groups]
     rows += [(dict(row.terms), row.most, row.least) for row in model.rows]
     entries = [(r, k, v) for r, (terms, _, _) in enumerate(rows) for k, v in terms.items()]

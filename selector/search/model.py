@@ -36,9 +36,8 @@ class Model:
         return numbers
 
     def add_row(
-        self, terms: Mapping[int, int], most: int | None, least: int | None = None,
-        about: str = "",
-    ) -> None:  # fmt: skip
+        self, terms: Mapping[int, int], most: int | None, least: int | None = None, about: str = ""
+    ) -> None:
         """A row; terms of coefficient 0 are dropped."""
         self.rows.append(Row({k: v for k, v in terms.items() if v}, most, least, about))
 

@@ -206,8 +206,11 @@ def _why_not(part: Part, machine: Machine) -> str | None:
 
 def _figures(motor: Motor, way: str) -> Joined:
     rated = (
-        motor.holding_torque, motor.rated_current, motor.phase_resistance, motor.phase_inductance
-    )  # fmt: skip
+        motor.holding_torque,
+        motor.rated_current,
+        motor.phase_resistance,
+        motor.phase_inductance,
+    )
     if way == AS_WOUND or motor.rated_as is None:
         return Joined(*rated)
     return joined(way, motor.rated_as, *rated)
@@ -258,17 +261,24 @@ def _winding_table(windings: list[Winding], machine: Machine) -> dict[str, Array
     torque, current, resistance, inductance = figures.T
     motors = [w.motor for w in windings]
     return {
-        "T_h": torque, "I_r": current, "R_25": resistance, "L": inductance,
+        "T_h": torque,
+        "I_r": current,
+        "R_25": resistance,
+        "L": inductance,
         "K": torque_constant(torque, current),
         "N": np.array([m.rotor_teeth for m in motors], dtype=float),
         "J": np.array([m.rotor_inertia or 0.0 for m in motors]),
-        "detent": np.array([
-            DETENT_SHARE * w.figures.holding_torque if w.motor.detent_torque is None
-            else w.motor.detent_torque for w in windings
-        ]),
+        "detent": np.array(
+            [
+                DETENT_SHARE * w.figures.holding_torque
+                if w.motor.detent_torque is None
+                else w.motor.detent_torque
+                for w in windings
+            ]
+        ),
         "rise": np.array([RATED_RISE if m.rated_rise is None else m.rated_rise for m in motors]),
         "heat_limit": np.array([_heat_limit(m, machine) for m in motors]),
-    }  # fmt: skip
+    }
 
 
 def _goal_table(offers: Offers) -> dict[str, Array]:
@@ -288,14 +298,16 @@ def _goal_table(offers: Offers) -> dict[str, Array]:
 
     goals = [goal.of for goal in offers.goals]
     return {
-        "winding_goals": steps(motors, goals), "driver_goals": steps(offers.drivers, goals),
-        "winding_amounts": steps(motors, AMOUNTS), "driver_amounts": steps(offers.drivers, AMOUNTS),
+        "winding_goals": steps(motors, goals),
+        "driver_goals": steps(offers.drivers, goals),
+        "winding_amounts": steps(motors, AMOUNTS),
+        "driver_amounts": steps(offers.drivers, AMOUNTS),
         "motor": np.array([names.index(m.part) for m in motors], dtype=np.int64),
         "winding_place": np.argsort(np.array(by_name, dtype=np.int64)),
         "driver_place": np.argsort(np.array(drivers, dtype=np.int64)),
         "ample_motor": ample([next(m for m in motors if m.part == n) for n in names]),
         "ample_driver": ample(offers.drivers),
-    }  # fmt: skip
+    }
 
 
 def _heat_limit(motor: Motor, machine: Machine) -> float:
