@@ -13,8 +13,21 @@ from dataclasses import dataclass
 from functools import cache
 from typing import Any
 
-NUMBER = r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?"
-_WRITTEN = re.compile(rf"^({NUMBER})\s*(.*)$")
+NUMBER = r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?"
+_WRITTEN = re.compile(rf"^({NUMBER})\s*(.*)$", re.DOTALL)
+_FIGURES_GO_ON = re.compile(r"^[\s,.'’_]*[0-9]")  # as in 1,5 and 1'000 and 1 000
+_POINT = "write the decimal sign as a point, and no mark between thousands"
+_LONGEST_SHOWN = 24
+
+# Units that none of the kinds below takes, so that the message can say what they are.
+_FOREIGN = {
+    "energy": ("J", "mJ", "kJ", "Wh", "kWh"),
+    "force": ("N", "kN", "lbf", "ozf", "kgf"),
+    "speed in a line": ("m/s", "mm/s", "m/min", "mm/min"),
+    "acceleration in a line": ("m/s^2", "mm/s^2", "m/s2"),
+    "charge": ("Ah", "mAh"),
+    "apparent power": ("VA", "kVA"),
+}
 
 
 @dataclass(frozen=True)
@@ -59,11 +72,13 @@ KINDS: dict[str, Kind] = {
         Kind("current", "A", _same("A", "mA"), 0.0, 100.0, "2.8 A"),
         Kind(
             "resistance", "ohm",
-            _same("ohm", "mohm", "kohm") | {"Ω": "ohm", "Ohm": "ohm", "mΩ": "mohm"},
+            _same("ohm", "mohm", "kohm") | {"Ω": "ohm", "Ohm": "ohm", "mΩ": "mohm"}
+            | {"\u2126": "ohm", "m\u2126": "mohm"},
             0.0, 1e4, "1.13 ohm",
         ),
-        Kind("inductance", "H", _same("H", "mH", "uH") | {"µH": "uH"}, 0.0, 1.0, "5.4 mH"),
-        Kind("capacitance", "F", _same("F", "mF", "uF") | {"µF": "uF"}, 0.0, 10.0, "2200 uF"),
+        Kind("inductance", "H", _same("H", "mH", "uH") | {"µH": "uH", "μH": "uH"}, 0.0, 1.0, "5.4 mH"),
+        Kind("capacitance", "F", _same("F", "mF", "uF") | {"µF": "uF", "μF": "uF"},
+             0.0, 10.0, "2200 uF"),
         Kind("voltage", "V", _same("V", "mV", "kV"), 0.0, 1e3, "36 V"),
         Kind("power", "W", _same("W", "mW", "kW"), 0.0, 1e5, "150 W"),
         Kind(
@@ -97,7 +112,8 @@ KINDS: dict[str, Kind] = {
             0.0, 10.0, "0.4 dm^3",
         ),
         Kind("frequency", "Hz", _same("Hz", "kHz", "MHz"), 0.0, 1e9, "200 kHz"),
-        Kind("time", "s", _same("s", "ms", "us", "min", "h") | {"µs": "us"}, 0.0, 1e7, "20 us"),
+        Kind("time", "s", _same("s", "ms", "us", "min", "h") | {"µs": "us", "μs": "us"},
+             0.0, 1e7, "20 us"),
         Kind(
             "lead_time", "day",
             _same("day", "week") | {"days": "day", "weeks": "week", "d": "day"},
@@ -140,27 +156,39 @@ def parse(kind_name: str, text: str) -> float:
         If the text is no number with a unit of this kind, or a size no small machine can mean.
     """
     kind = KINDS[kind_name]
-    what = kind.name.replace("_", " ")
-    wanted = f"a {what} such as {kind.example}"
+    wanted = f"{named(kind_name)} such as {kind.example}"
     written = _WRITTEN.match(text.strip())
     if written is None:
-        remedy = "write a finite number and its unit"
-        if re.match(r"^[+-]?\d+,\d", text.strip()):
-            remedy = "write the decimal sign as a point"
-        raise QuantityError("no-number", wanted, remedy)
+        raise QuantityError("no-number", wanted, "write a finite number and its unit")
     figure, unit = written.group(1), written.group(2).strip()
-    if unit.startswith(",") and unit[1:2].isdigit():
-        raise QuantityError("no-number", wanted, "write the decimal sign as a point")
+    if _FIGURES_GO_ON.match(unit):
+        raise QuantityError("no-number", wanted, _POINT)
     if not unit:
-        units = ", ".join(list(kind.spellings)[:6])
-        raise QuantityError("missing-unit", wanted, f"add the unit, one of: {units}")
+        units = list(kind.spellings)[:6]
+        which = "the unit, one of: " + ", ".join(units) if len(units) > 1 else f'"{units[0]}"'
+        raise QuantityError("missing-unit", wanted, f"add {which}")
     if unit not in kind.spellings:
         raise _unit_fault(kind, unit, wanted)
     value = _value(float(figure), *_scale(kind.spellings[unit], kind.unit))
+    if value < 0.0 <= kind.least:
+        raise QuantityError("too-small", f"{wanted}, not negative", "check the sign")
     if not math.isfinite(value) or not kind.least <= value <= kind.most:
-        low, high = f"{kind.least:g} {kind.unit}", f"{kind.most:g} {kind.unit}"
+        low, high = _bound(kind, kind.least), _bound(kind, kind.most)
         raise QuantityError("absurd-size", f"{wanted}, from {low} to {high}", "check the unit")
     return value
+
+
+def named(kind_name: str) -> str:
+    """The kind in words with its article, such as "an inertia"."""
+    words = kind_name.replace("_", " ")
+    return f"an {words}" if words[0] in "aeiou" else f"a {words}"
+
+
+def _bound(kind: Kind, value: float) -> str:
+    """A bound of a kind as its user would write it."""
+    if kind.unit == "1":
+        return f"{100 * value:g} %"
+    return f"{value:g} {kind.unit.replace('1/', 'per ')}"
 
 
 def _value(figure: float, factor: float, offset: float) -> float:
@@ -172,14 +200,15 @@ def _value(figure: float, factor: float, offset: float) -> float:
 
 
 def _unit_fault(kind: Kind, unit: str, wanted: str) -> QuantityError:
+    shown = unit if len(unit) <= _LONGEST_SHOWN else unit[: _LONGEST_SHOWN - 3] + "..."
     others = [k.name.replace("_", " ") for k in KINDS.values() if unit in k.spellings]
+    others += [name for name, units in _FOREIGN.items() if unit in units]
+    near = difflib.get_close_matches(unit[:_LONGEST_SHOWN], kind.spellings, n=1, cutoff=0.5)
     if others:
-        return QuantityError(
-            "wrong-kind", wanted, f'"{unit}" is a unit of {others[0]}, not of {kind.name}'
-        )
-    near = difflib.get_close_matches(unit, kind.spellings, n=1, cutoff=0.5)
-    units = f'did you mean "{near[0]}"?' if near else "one of: " + ", ".join(kind.spellings)
-    return QuantityError("unknown-unit", wanted, f'"{unit}" is not known here; {units}')
+        mine = kind.name.replace("_", " ")
+        return QuantityError("wrong-kind", wanted, f'"{unit}" is a unit of {others[0]}, not {mine}')
+    known = f'did you mean "{near[0]}"?' if near else "one of: " + ", ".join(kind.spellings)
+    return QuantityError("unknown-unit", wanted, f'"{shown}" is not known here; {known}')
 
 
 def write(kind_name: str, value: float, unit: str | None = None, digits: int = 12) -> str:

@@ -10,7 +10,7 @@ from . import __version__
 from .domain.machine import Problem
 from .domain.results import Answer, AxisChoice, Design, Goal, Judgement, NextSetting, Proof
 from .errors import WrongVerdict
-from .inputs.design_file import check_design, load_design
+from .inputs.design_file import check_design, load_design, save_design
 from .inputs.load import load_catalogue, load_problem
 
 if TYPE_CHECKING:
@@ -18,7 +18,7 @@ if TYPE_CHECKING:
 
 Progress = Callable[[str], None]
 
-__all__ = ["judge_design", "judge_file", "load_catalogue", "load_problem", "pick"]
+__all__ = ["judge_design", "judge_file", "load_catalogue", "load_problem", "pick", "save_design"]
 
 
 def pick(

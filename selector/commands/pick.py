@@ -5,9 +5,8 @@ from __future__ import annotations
 import sys
 from pathlib import Path
 
-from ..inputs.design_file import save_design
 from ..reports import tables, terminal
-from ..workflow import load_problem, pick
+from ..workflow import load_problem, pick, save_design
 from .progress import shown
 
 CODES = {"proved": 0, "none exists": 1, "not proved": 3}

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import unicodedata
 from decimal import Decimal
 from typing import Annotated, Any, NamedTuple
 
@@ -12,7 +13,8 @@ from pydantic_core import PydanticCustomError
 from .. import units
 
 CURRENCY = re.compile(r"^[A-Z]{3}$")
-_MONEY = re.compile(r"^(\d+(?:\.\d{1,4})?)(?:\s+([A-Z]{3}))?$")
+_MONEY = re.compile(r"^([0-9]{1,9}(?:\.[0-9]{1,4})?)(?:\s+([A-Z]{3}))?$")
+LONGEST_TEXT = 500
 
 
 class Record(BaseModel):
@@ -28,15 +30,20 @@ class Money(NamedTuple):
     currency: str | None = None
 
 
-def fault(name: str, expected: str, remedy: str = "") -> PydanticCustomError:
-    """The error a validator raises: its fields go into a :class:`selector.errors.Fault`."""
-    return PydanticCustomError(
-        "selector", "expected {expected}", {"name": name, "expected": expected, "remedy": remedy}
-    )
+def fault(
+    name: str, expected: str, remedy: str = "", at: tuple[str | int, ...] = ()
+) -> PydanticCustomError:
+    """The error a validator raises: its fields go into a :class:`selector.errors.Fault`.
+
+    ``at`` leads from the record that raises to the key at fault.
+    """
+    fields = {"name": name, "expected": expected, "remedy": remedy, "at": at}
+    return PydanticCustomError("selector", "expected {expected}", fields)
 
 
 def quantity(kind: str, *, above: float | None = None, least: float | None = None) -> Any:
     """Validator of a quantity: text with a unit, or a float in SI when set from Python."""
+    called = units.named(kind)
 
     def read(value: Any) -> float:
         if isinstance(value, str):
@@ -47,16 +54,13 @@ def quantity(kind: str, *, above: float | None = None, least: float | None = Non
         elif isinstance(value, int | float) and not isinstance(value, bool):
             number = float(value)
             if number != number or number in (float("inf"), float("-inf")):
-                raise fault("no-number", f"a finite {kind}")
+                raise fault("no-number", f"{called} that is finite")
         else:
-            example = units.KINDS[kind].example
-            raise fault("wrong-shape", f"one {kind.replace('_', ' ')} such as {example}")
+            raise fault("wrong-shape", f"{called} such as {units.KINDS[kind].example}")
         if above is not None and number <= above:
-            raise fault(
-                "too-small", f"a {kind.replace('_', ' ')} above {above:g}", "check the sign"
-            )
+            raise fault("too-small", f"{called} above {above:g}", "check sign and figure")
         if least is not None and number < least:
-            raise fault("too-small", f"a {kind.replace('_', ' ')} of {least:g} or more")
+            raise fault("too-small", f"{called} of {least:g} or more", "check the sign")
         return number
 
     return BeforeValidator(read)
@@ -71,7 +75,7 @@ def _yes_no(value: Any) -> bool:
 
 
 def _count(value: Any) -> int:
-    if isinstance(value, str) and re.fullmatch(r"[+-]?\d{1,9}", value):
+    if isinstance(value, str) and re.fullmatch(r"[+-]?[0-9]{1,9}", value):
         value = int(value)
     if not isinstance(value, int) or isinstance(value, bool):
         raise fault("no-count", "a whole number such as 4", "write it without unit or decimals")
@@ -87,8 +91,10 @@ def _count_from_zero(value: Any) -> int:
 def _text(value: Any) -> str:
     if not isinstance(value, str) or not value.strip():
         raise fault("no-text", "some text on one line")
-    if any(ord(c) < 32 for c in value):
+    if any(unicodedata.category(c) in ("Cc", "Cs", "Zl", "Zp") for c in value):
         raise fault("no-text", "text without control characters or line breaks")
+    if len(value) > LONGEST_TEXT:
+        raise fault("too-long", f"text of {LONGEST_TEXT} characters at most", "shorten it")
     return value.strip()
 
 
@@ -105,7 +111,7 @@ def _money(value: Any) -> Money:
         value = str(value)
     found = _MONEY.match(value.strip()) if isinstance(value, str) else None
     if found is None:
-        remedy = "use a point, no thousands mark, at most four decimals"
+        remedy = "use a point, no sign, no mark between thousands, at most four decimals"
         raise fault("no-price", "a price such as 24.90 or 24.90 EUR", remedy)
     amount = Decimal(found.group(1))
     if amount > Decimal(10**7):

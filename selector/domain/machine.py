@@ -71,7 +71,7 @@ class Axis(Record):
     @model_validator(mode="after")
     def _complete(self) -> Axis:
         if not self.points:
-            raise fault("empty", "at least one point with speed and torque")
+            raise fault("empty", "at least one point with speed and torque", at=("points",))
         if any(p.acceleration for p in self.points) and self.load_inertia is None:
             raise fault(
                 "missing-key",
@@ -85,13 +85,15 @@ class Axis(Record):
                 "state the torque that keeps its load from falling",
             )
         shares = [p.share for p in self.points]
-        if any(s is not None for s in shares):
-            if any(s is None for s in shares):
-                raise fault("missing-key", "a share at every point or at none")
-            if sum(s or 0.0 for s in shares) > 1.0 + 1e-9:
-                raise fault("contradiction", "shares of 100 % together at most", "rest fills up")
+        if None in shares and any(s is not None for s in shares):
+            without = ("points", shares.index(None))
+            raise fault("missing-key", "a share at every point or at none", at=without)
+        if sum(s or 0.0 for s in shares) > 1.0 + 1e-9:
+            remedy = "what is left of 100 % is rest"
+            raise fault("contradiction", "shares of 100 % together at most", remedy, ("points",))
         if not 0.1 <= self.mounting_factor <= 10.0:
-            raise fault("absurd-size", "a mounting_factor from 10 % to 1000 %")
+            expected = "a mounting_factor from 10 % to 1000 %"
+            raise fault("absurd-size", expected, at=("mounting_factor",))
         return self
 
     @property
@@ -133,7 +135,8 @@ class Margins(Record):
     @model_validator(mode="after")
     def _possible(self) -> Margins:
         if not 0 < self.voltage_use <= 1:
-            raise fault("contradiction", "a voltage_use above 0 %, up to 100 %")
+            expected = "a voltage_use above 0 %, up to 100 %"
+            raise fault("contradiction", expected, at=("voltage_use",))
         return self
 
 
@@ -147,8 +150,9 @@ class Tolerances(Record):
 
     @model_validator(mode="after")
     def _possible(self) -> Tolerances:
-        if max(self.resistance, self.inductance, self.torque) >= 1.0:
-            raise fault("absurd-size", "tolerances below 100 %")
+        for key in ("resistance", "inductance", "torque"):
+            if getattr(self, key) >= 1.0:
+                raise fault("absurd-size", "a tolerance below 100 %", at=(key,))
         return self
 
 
@@ -161,7 +165,7 @@ class VoltageLimits(Record):
     @model_validator(mode="after")
     def _ordered(self) -> VoltageLimits:
         if self.min is not None and self.max is not None and self.max < self.min:
-            raise fault("contradiction", "max at or above min", "swap or correct them")
+            raise fault("contradiction", "max at or above min", "swap or correct them", ("max",))
         return self
 
 
@@ -179,7 +183,8 @@ class Limits(Record):
     @model_validator(mode="after")
     def _one_bus(self) -> Limits:
         if self.buses != 1:
-            raise fault("not-yet", "buses: 1", "this version chooses one bus for all axes")
+            remedy = "this version chooses one bus for all axes"
+            raise fault("not-yet", "buses: 1", remedy, ("buses",))
         return self
 
 
@@ -208,17 +213,20 @@ class Worth(Record):
             if key not in ("volume", "mass") or not isinstance(value, str):
                 read[key] = value
                 continue
-            amount, _, unit = value.partition(" ")
-            currency, slash, per = unit.partition("/")
+            amount, _, unit = value.strip().partition(" ")
+            currency, slash, per = unit.strip().partition("/")
             if not CURRENCY.match(currency) or not slash:
                 example = "8 EUR/dm^3" if key == "volume" else "5 EUR/kg"
-                raise fault("no-worth", f"a worth such as {example}", "name currency and unit")
+                expected = f"a worth such as {example}"
+                raise fault("no-worth", expected, "name currency and unit", (key,))
             try:
                 read[key] = units.parse(f"{key}_worth", f"{amount} /{per}")
             except units.QuantityError as error:
-                raise fault(error.name, error.expected, error.remedy) from None
+                raise fault(error.name, error.expected, error.remedy, (key,)) from None
             if read.setdefault("currency", currency) != currency:
-                raise fault("contradiction", "one currency in all worths")
+                raise fault("contradiction", "one currency in all worths", at=(key,))
+        if not read:
+            raise fault("empty", "a worth of volume or mass")
         return read
 
 
@@ -226,9 +234,10 @@ def _minimise(value: Any) -> Any:
     value = listed(value)
     if isinstance(value, tuple):
         if not value or any(goal not in GOALS for goal in value):
-            raise fault("unknown-goal", "cost, volume or mass, or an ordered list of these")
+            remedy = "for a weighing write such as {volume: 8 EUR/dm^3}"
+            raise fault("unknown-goal", "cost, volume or mass, or an ordered list of these", remedy)
         if len(set(value)) != len(value):
-            raise fault("contradiction", "each goal once")
+            raise fault("contradiction", "each goal once", "drop the second one")
     return value
 
 
@@ -258,20 +267,26 @@ class Machine(Record):
     @model_validator(mode="after")
     def _named_once(self) -> Machine:
         if not self.axes:
-            raise fault("empty", "at least one axis")
+            raise fault("empty", "at least one axis", at=("axes",))
+        if not self.catalogues:
+            raise fault("empty", "at least one catalogue file or folder", at=("catalogues",))
         names = [axis.axis for axis in self.axes]
-        if len(set(names)) != len(names):
-            twice = next(n for n in names if names.count(n) > 1)
-            raise fault("doubled-name", "a name of its own for each axis", f"rename one {twice!r}")
+        for number, name in enumerate(names):
+            if name in names[:number]:
+                place = ("axes", number, "axis")
+                raise fault("doubled-name", "a name of its own for each axis", "rename one", place)
         if len(self.axes) > 64:
-            raise fault("absurd-size", "at most 64 axes")
+            raise fault("absurd-size", "at most 64 axes", at=("axes",))
         if isinstance(self.minimise, Worth) and self.minimise.currency not in (None, self.currency):
-            raise fault("contradiction", f"worths in the machine's currency, {self.currency}")
+            expected = f"worths in the machine's currency, {self.currency}"
+            raise fault("contradiction", expected, at=("minimise",))
         price = self.limits.price
         if price is not None and price.currency not in (None, self.currency):
-            raise fault("contradiction", f"a price limit in the machine's currency {self.currency}")
+            expected = f"a price limit in the machine's currency, {self.currency}"
+            raise fault("contradiction", expected, at=("limits", "price"))
         if not -40.0 <= self.ambient <= 100.0:
-            raise fault("absurd-size", "an ambient from -40 degC to 100 degC")
+            expected = "an ambient from -40 degC to 100 degC"
+            raise fault("absurd-size", expected, at=("ambient",))
         return self
 
     @property

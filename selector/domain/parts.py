@@ -6,10 +6,12 @@ answer lists every figure so filled.
 
 from __future__ import annotations
 
+import re
 from decimal import Decimal
 from typing import Annotated, Any, Literal
 
 from pydantic import BeforeValidator, Field, model_validator
+from pydantic_core import PydanticCustomError
 
 from .fields import (
     Angle,
@@ -23,6 +25,7 @@ from .fields import (
     LeadTime,
     Length,
     Mass,
+    Money,
     Power,
     PowerFromZero,
     Price,
@@ -67,7 +70,7 @@ class VoltageRange(Record):
     @model_validator(mode="after")
     def _ordered(self) -> VoltageRange:
         if self.max < self.min:
-            raise fault("contradiction", "max at or above min", "swap or correct them")
+            raise fault("contradiction", "max at or above min", "swap or correct them", ("max",))
         return self
 
 
@@ -99,20 +102,23 @@ class Part(Record):
     def _price_by_quantity(cls, data: Any) -> Any:
         if not isinstance(data, dict) or not isinstance(data.get("price"), dict):
             return data
-        steps = []
+        steps: list[tuple[int, Money]] = []
         for quantity, price in data["price"].items():
-            if not str(quantity).isdigit() or int(quantity) < 1:
-                raise fault("no-count", "price steps such as 10: 21.50", "quantity on the left")
-            money = _money(price)
-            steps.append((int(quantity), money.amount))
-        currency = _money(next(iter(data["price"].values()))).currency if steps else None
-        kept = {key: value for key, value in data.items() if key != "price"}
-        return kept | {
-            "price_table": tuple(sorted(steps)),
-            "price": _money(str(min(steps)[1]))
-            if currency is None
-            else _money(f"{min(steps)[1]} {currency}"),
-        }
+            place = ("price", quantity)
+            if not re.fullmatch("[1-9][0-9]{0,8}", str(quantity)):
+                raise fault("no-count", "price steps such as 10: 21.50", "quantity on the left", place)
+            try:
+                steps.append((int(quantity), _money(price)))
+            except PydanticCustomError as error:
+                found = error.context or {}
+                raise fault(found["name"], found["expected"], found["remedy"], place) from None
+            if steps[-1][1].currency != steps[0][1].currency:
+                raise fault("contradiction", "one currency in all price steps", at=place)
+        if not steps:
+            raise fault("empty", "price steps such as 10: 21.50", at=("price",))
+        steps.sort()
+        table = tuple((quantity, money.amount) for quantity, money in steps)
+        return data | {"price_table": table, "price": steps[0][1]}
 
     @property
     def outer_volume(self) -> float | None:
@@ -159,7 +165,9 @@ class Motor(Part):
     @model_validator(mode="after")
     def _joinable(self) -> Motor:
         if self.wires == 4 and (self.joinings or self.rated_as):
-            raise fault("contradiction", "no joinings or rated_as on a motor with 4 wires")
+            key = "joinings" if self.joinings else "rated_as"
+            remedy = f"drop {key}, or state wires: 6 or 8"
+            raise fault("contradiction", f"no {key} on a motor with 4 wires", remedy, (key,))
         if self.wires != 4 and self.rated_as is None:
             raise fault(
                 "missing-key",
@@ -167,12 +175,17 @@ class Motor(Part):
                 f"say what the rating of this {self.wires}-wire motor stands for",
             )
         if self.wires != 4 and not self.joinings:
-            raise fault("missing-key", "joinings such as [series, parallel]")
+            raise fault("missing-key", "joinings such as [series, parallel]", "add the key")
         if self.wires == 6 and (self.joinings != ("series",) or self.rated_as == "parallel"):
-            raise fault("contradiction", "series as the only joining of a motor with 6 wires")
+            key = "rated_as" if self.joinings == ("series",) else "joinings"
+            expected = "series as the only joining of a motor with 6 wires"
+            raise fault("contradiction", expected, at=(key,))
+        if len(set(self.joinings)) != len(self.joinings):
+            raise fault("contradiction", "each joining once", at=("joinings",))
         teeth = 90.0 / self.step_angle
         if abs(teeth - round(teeth)) > 1e-6:
-            raise fault("contradiction", "a step_angle that divides 90 deg, such as 1.8 deg")
+            expected = "a step_angle that divides 90 deg, such as 1.8 deg"
+            raise fault("contradiction", expected, at=("step_angle",))
         return self
 
     @property
@@ -196,9 +209,9 @@ class SettingRange(Record):
     @model_validator(mode="after")
     def _ordered(self) -> SettingRange:
         if self.max < self.min:
-            raise fault("contradiction", "max at or above min", "swap or correct them")
+            raise fault("contradiction", "max at or above min", "swap or correct them", ("max",))
         if (self.max - self.min) / self.step > 10_000:
-            raise fault("absurd-size", "at most 10 000 settings", "check the step")
+            raise fault("absurd-size", "at most 10 000 settings", "check the step", ("step",))
         return self
 
     def settings(self) -> tuple[float, ...]:
@@ -241,14 +254,18 @@ class Driver(Part):
 
     @model_validator(mode="after")
     def _usable(self) -> Driver:
-        if not self.microsteps or (
-            isinstance(self.current_settings, tuple) and not self.current_settings
-        ):
-            raise fault("empty", "at least one current setting and one microstep value")
-        if any(not 0 < share <= 1 for share in self.hold_current):
-            raise fault("contradiction", "hold_current shares above 0 %, up to 100 %")
-        if any(n & (n - 1) for n in self.microsteps):
-            raise fault("contradiction", "microsteps that are powers of two")
+        if not self.microsteps:
+            raise fault("empty", "at least one microstep value", at=("microsteps",))
+        if not self.current_settings:
+            raise fault("empty", "at least one current setting", at=("current_settings",))
+        for number, share in enumerate(self.hold_current):
+            if not 0 < share <= 1:
+                expected, place = "a share above 0 %, up to 100 %", ("hold_current", number)
+                raise fault("contradiction", expected, at=place)
+        for number, steps in enumerate(self.microsteps):
+            if steps & (steps - 1):
+                place = ("microsteps", number)
+                raise fault("contradiction", "a power of two such as 16", at=place)
         return self
 
     @property
@@ -314,20 +331,22 @@ class Supply(Part):
     @model_validator(mode="after")
     def _consistent(self) -> Supply:
         if self.rated_power is None and self.rated_current is None:
-            raise fault("missing-key", "rated_power or rated_current")
+            raise fault("missing-key", "rated_power or rated_current", "add one of them")
         if self.trim and not self.trim.min <= self.voltage <= self.trim.max:
-            raise fault("contradiction", "a trim range that contains the voltage")
+            raise fault("contradiction", "a trim range that contains the voltage", at=("trim",))
         if self.efficiency is not None and not 0 < self.efficiency <= 1:
-            raise fault("contradiction", "an efficiency above 0 %, up to 100 %")
+            expected = "an efficiency above 0 %, up to 100 %"
+            raise fault("contradiction", expected, at=("efficiency",))
         if self.tolerance is not None and self.tolerance >= 0.5:
-            raise fault("absurd-size", "a tolerance below 50 %")
+            raise fault("absurd-size", "a tolerance below 50 %", at=("tolerance",))
         if self.overvoltage_trip is not None and self.overvoltage_trip <= self.voltage:
-            raise fault("contradiction", "an overvoltage_trip above the voltage")
+            expected = "an overvoltage_trip above the voltage"
+            raise fault("contradiction", expected, at=("overvoltage_trip",))
         if self.parallel > 16:
-            raise fault("absurd-size", "at most 16 units in parallel")
+            raise fault("absurd-size", "at most 16 units in parallel", at=("parallel",))
         temperatures = [step.at for step in self.derating]
         if temperatures != sorted(temperatures):
-            raise fault("contradiction", "derating temperatures that rise")
+            raise fault("contradiction", "derating temperatures that rise", at=("derating",))
         return self
 
     @property

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from ..domain.parts import Driver
 from ..domain.results import State
 from ..physics import braking
 from .axis_rules import Findings, at_least, at_most, finding
@@ -233,6 +234,30 @@ def limits(bus: BusCase) -> Findings:
                 )
 
 
+def beyond_this_version(bus: BusCase) -> Findings:
+    """Parts that are read but not yet judged for what they are."""
+    for _, part, _ in bus.parts.values():
+        notes = []
+        if isinstance(part, Driver) and part.channels > 1:
+            notes.append(f"drives {part.channels} motors, counted as a unit for each")
+        if part.price_table:
+            notes.append("priced by quantity, counted at the price of the smallest")
+        if part.pack > 1:
+            notes.append(f"sold in packs of {part.pack}, counted singly")
+        if notes:
+            yield finding(
+                "quantities",
+                part.part,
+                None,
+                None,
+                "1",
+                None,
+                "unknown",
+                "stated",
+                "; ".join(notes),
+            )
+
+
 RULES = (
     set_voltage,
     driver_voltage,
@@ -243,4 +268,5 @@ RULES = (
     steady_lowering,
     stock,
     limits,
+    beyond_this_version,
 )

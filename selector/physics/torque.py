@@ -151,7 +151,8 @@ def winding_resistance(resistance_25: Numbers, temperature: Numbers) -> Numbers:
 
     Notes
     -----
-    Standing: published (IACS copper, 0.00393 /K); data sheets state 25 °C, taken as the base.
+    Standing: published (0.00393 /K at 20 °C: K. C. Agrawal, Industrial Power Engineering and
+    Applications Handbook, table of conductors); taken from 25 °C, where data sheets state R.
 
     Examples
     --------

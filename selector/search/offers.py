@@ -237,7 +237,8 @@ def _feeds(machine: Machine, supplies: list[Supply]) -> tuple[list[Rail], list[F
             most = min(most, supply.stock // machine.quantity)
         for voltage in voltages_on_offer(supply):
             rail = Rail(voltage, supply.spread)
-            if not _rail_allowed(machine, rail):
+            trip = supply.overvoltage_trip
+            if not _rail_allowed(machine, rail) or (trip is not None and rail.highest > trip):
                 continue
             index = rails.setdefault(rail, len(rails))
             for count in range(1, most + 1):
