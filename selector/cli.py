@@ -9,7 +9,7 @@ from __future__ import annotations
 import os
 import sys
 from pathlib import Path
-from typing import Annotated
+from typing import Annotated, Any
 
 import typer
 
@@ -23,6 +23,7 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     help="Choose motors, drivers, settings, bus voltage and supply for the axes of a machine.",
 )
+# Files are opened by the loaders, not tried by typer before: theirs are the better messages.
 Json = Annotated[bool, typer.Option("--json", help="Print one JSON object instead of text.")]
 
 
@@ -43,9 +44,11 @@ def options(
 
 @app.command()
 def pick(
-    machine: Annotated[Path, typer.Argument(help="A machine file (YAML).")],
+    machine: Annotated[
+        Path, typer.Argument(metavar="MACHINE", readable=False, help="A machine file (YAML).")
+    ],
     save: Annotated[
-        Path | None, typer.Option(help="Keep the design in this file, for judge.")
+        Path | None, typer.Option(readable=False, help="Keep the design in this file, for judge.")
     ] = None,
     as_json: Json = False,
     seconds: Annotated[
@@ -61,7 +64,12 @@ def pick(
 
 @app.command()
 def judge(
-    design: Annotated[Path, typer.Argument(help="A design kept by pick, or written by hand.")],
+    design: Annotated[
+        Path,
+        typer.Argument(
+            metavar="DESIGN", readable=False, help="A design kept by pick, or written by hand."
+        ),
+    ],
     as_json: Json = False,
 ) -> None:
     """Recompute DESIGN and check every rule, without the search."""
@@ -72,7 +80,12 @@ def judge(
 
 @app.command()
 def catalogue(
-    path: Annotated[Path, typer.Argument(help="A catalogue file, or a folder of them.")],
+    path: Annotated[
+        Path,
+        typer.Argument(
+            metavar="PATH", readable=False, help="A catalogue file, or a folder of them."
+        ),
+    ],
     as_json: Json = False,
 ) -> None:
     """Check and list the parts in PATH."""
@@ -83,20 +96,26 @@ def catalogue(
 
 def main() -> None:
     """Run the command line and leave with its exit code."""
+    for name in ("stdout", "stderr"):
+        stream = getattr(sys, name)
+        if stream is None:  # closed by the caller
+            setattr(sys, name, open(os.devnull, "w"))  # noqa: SIM115, PTH123 - open until the end
+        else:  # a name that the terminal's encoding lacks must not end the run
+            stream.reconfigure(errors="backslashreplace")
     sys.exit(run_app(sys.argv[1:]))
+
+
+# Typer stands on click or on a copy of it; the error of a wrong call is found from one of its kind.
+_WrongCall: Any = typer.BadParameter.__base__
+_INTERRUPTED = 130  # what typer makes of Ctrl-C
 
 
 def run_app(arguments: list[str]) -> int:
     """Run one command; returns the exit code."""
-    import click
-
     try:
-        code = app(arguments, standalone_mode=False)
+        code = int(app(arguments, prog_name="selector", standalone_mode=False) or 0)
         sys.stdout.flush()
-        return int(code or 0)
-    except click.exceptions.Exit as end:
-        return end.exit_code
-    except click.ClickException as error:
+    except _WrongCall as error:
         error.show()
         return 2
     except InputFaults as error:
@@ -104,21 +123,33 @@ def run_app(arguments: list[str]) -> int:
 
         print_faults(error.faults, sys.stderr)
         return error.exit_code
-    except (KeyboardInterrupt, click.Abort):
-        print("stopped; nothing was written", file=sys.stderr)
-        return 3
-    except BrokenPipeError:
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    except (KeyboardInterrupt, typer.Abort):
+        code = _INTERRUPTED
+    except (BrokenPipeError, SystemExit):  # typer makes the second of the first
+        _drop_output()
         return 0
     except SelectorError as error:
         print(f"{error.name}: {error}", file=sys.stderr)
         return error.exit_code
-    except Exception:
+    except Exception as error:
+        if isinstance(error, OSError) and error.filename is None:
+            _drop_output()
+            print(f"the answer could not be written: {error.strerror}", file=sys.stderr)
+            return 2
         import traceback
 
         traceback.print_exc()
         print("this is a fault of selector, not of your files: please report it", file=sys.stderr)
         return 70
+    if code == _INTERRUPTED:
+        print("stopped; nothing was written", file=sys.stderr)
+        return 3
+    return code
+
+
+def _drop_output() -> None:
+    """Send what is left in the buffer nowhere, or leaving would try to write it again."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 if __name__ == "__main__":

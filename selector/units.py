@@ -10,6 +10,7 @@ import difflib
 import math
 import re
 from dataclasses import dataclass
+from decimal import Decimal
 from functools import cache
 from typing import Any
 
@@ -18,6 +19,7 @@ _WRITTEN = re.compile(rf"^({NUMBER})\s*(.*)$", re.DOTALL)
 _FIGURES_GO_ON = re.compile(r"^[\s,.'’_]*[0-9]")  # as in 1,5 and 1'000 and 1 000
 _POINT = "write the decimal sign as a point, and no mark between thousands"
 _LONGEST_SHOWN = 24
+SMALLEST = 1e-15  # of any SI figure but zero: less is a slip, and its square may vanish
 
 # Units that none of the kinds below takes, so that the message can say what they are.
 _FOREIGN = {
@@ -76,9 +78,14 @@ KINDS: dict[str, Kind] = {
             | {"\u2126": "ohm", "m\u2126": "mohm"},
             0.0, 1e4, "1.13 ohm",
         ),
-        Kind("inductance", "H", _same("H", "mH", "uH") | {"µH": "uH", "μH": "uH"}, 0.0, 1.0, "5.4 mH"),
-        Kind("capacitance", "F", _same("F", "mF", "uF") | {"µF": "uF", "μF": "uF"},
-             0.0, 10.0, "2200 uF"),
+        Kind(
+            "inductance", "H", _same("H", "mH", "uH") | {"µH": "uH", "μH": "uH"},
+            0.0, 1.0, "5.4 mH",
+        ),
+        Kind(
+            "capacitance", "F", _same("F", "mF", "uF") | {"µF": "uF", "μF": "uF"},
+            0.0, 10.0, "2200 uF",
+        ),
         Kind("voltage", "V", _same("V", "mV", "kV"), 0.0, 1e3, "36 V"),
         Kind("power", "W", _same("W", "mW", "kW"), 0.0, 1e5, "150 W"),
         Kind(
@@ -169,12 +176,14 @@ def parse(kind_name: str, text: str) -> float:
         raise QuantityError("missing-unit", wanted, f"add {which}")
     if unit not in kind.spellings:
         raise _unit_fault(kind, unit, wanted)
-    value = _value(float(figure), *_scale(kind.spellings[unit], kind.unit))
+    value = _value(figure, *_scale(kind.spellings[unit], kind.unit))
     if value < 0.0 <= kind.least:
         raise QuantityError("too-small", f"{wanted}, not negative", "check the sign")
     if not math.isfinite(value) or not kind.least <= value <= kind.most:
         low, high = _bound(kind, kind.least), _bound(kind, kind.most)
         raise QuantityError("absurd-size", f"{wanted}, from {low} to {high}", "check the unit")
+    if 0.0 < abs(value) < SMALLEST:
+        raise QuantityError("absurd-size", f"{wanted}, or zero", "check the exponent")
     return value
 
 
@@ -191,19 +200,25 @@ def _bound(kind: Kind, value: float) -> str:
     return f"{value:g} {kind.unit.replace('1/', 'per ')}"
 
 
-def _value(figure: float, factor: float, offset: float) -> float:
-    """Convert without leaving dust such as 0.028000000000000004 where a division is exact."""
-    inverse = round(1.0 / factor)
-    if offset == 0.0 and inverse > 1 and math.isclose(inverse * factor, 1.0, rel_tol=1e-14):
-        return figure / inverse
-    return figure * factor + offset
+def _value(figure: str, factor: float, offset: float) -> float:
+    """Convert in decimals where the factor is a power of ten, so that no dust is left.
+
+    In floats, 2.8 N*cm come out as 0.027999999999999997 N*m.
+    """
+    plain = float(figure)
+    shift = round(math.log10(factor))
+    decimal = offset == 0.0 and math.isclose(factor, 10.0**shift, rel_tol=1e-14)
+    if plain == 0.0 or not math.isfinite(plain):
+        return plain + offset
+    return float(Decimal(figure).scaleb(shift)) if decimal else plain * factor + offset
 
 
 def _unit_fault(kind: Kind, unit: str, wanted: str) -> QuantityError:
     shown = unit if len(unit) <= _LONGEST_SHOWN else unit[: _LONGEST_SHOWN - 3] + "..."
     others = [k.name.replace("_", " ") for k in KINDS.values() if unit in k.spellings]
     others += [name for name, units in _FOREIGN.items() if unit in units]
-    near = difflib.get_close_matches(unit[:_LONGEST_SHOWN], kind.spellings, n=1, cutoff=0.5)
+    near = [known for known in kind.spellings if known.casefold() == unit.casefold()]
+    near += difflib.get_close_matches(unit[:_LONGEST_SHOWN], kind.spellings, n=1, cutoff=0.55)
     if others:
         mine = kind.name.replace("_", " ")
         return QuantityError("wrong-kind", wanted, f'"{unit}" is a unit of {others[0]}, not {mine}')

@@ -160,7 +160,7 @@ def test_every_rule_that_can_fail_is_spoiled_once():
 
 
 def test_the_highest_driver_voltage_fails_with_the_braking_rise():
-    judgement, found = states(driver={"supply_voltage": {"min": 12.0, "max": 40.0}})
+    _judgement, found = states(driver={"supply_voltage": {"min": 12.0, "max": 40.0}})
     failed = {rule for rule, state in found if state == "fails"}
     assert failed == {"highest driver voltage", "braking rise"}
 

@@ -1,4 +1,4 @@
-"""The README is true: its output is what the command prints, its examples run, no key is missing."""
+"""The README is true: its output is what is printed, its examples run, no key is missing."""
 
 import re
 from pathlib import Path

@@ -141,6 +141,11 @@ def listed(value: Any) -> Any:
     return tuple(value) if isinstance(value, list) else value
 
 
+def list_or_keys(value: Any) -> str:
+    """Which of its two shapes a field is written in, where it takes a list or keys."""
+    return "keys" if isinstance(value, dict | Record) else "list"
+
+
 Torque = Annotated[float, quantity("torque")]
 TorqueAboveZero = Annotated[float, quantity("torque", above=0)]
 TorqueFromZero = Annotated[float, quantity("torque", least=0)]

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, Any, Literal
 
-from pydantic import BeforeValidator, Field, model_validator
+from pydantic import BeforeValidator, Discriminator, Field, Tag, model_validator
 
 from .. import units
 from .fields import (
@@ -34,6 +34,7 @@ from .fields import (
     Volume,
     YesNo,
     fault,
+    list_or_keys,
     listed,
 )
 from .parts import Catalogue, VoltageRange
@@ -232,7 +233,7 @@ class Worth(Record):
 
 def _minimise(value: Any) -> Any:
     value = listed(value)
-    if isinstance(value, tuple):
+    if isinstance(value, tuple) and all(isinstance(goal, str) for goal in value):
         if not value or any(goal not in GOALS for goal in value):
             remedy = "for a weighing write such as {volume: 8 EUR/dm^3}"
             raise fault("unknown-goal", "cost, volume or mass, or an ordered list of these", remedy)
@@ -259,7 +260,11 @@ class Machine(Record):
     margins: Margins = Margins()
     tolerances: Tolerances = Tolerances()
     limits: Limits = Limits()
-    minimise: Annotated[tuple[str, ...] | Worth, BeforeValidator(_minimise)] = ("cost",)
+    minimise: Annotated[
+        Annotated[tuple[str, ...], BeforeValidator(_minimise), Tag("list")]
+        | Annotated[Worth, Tag("keys")],
+        Discriminator(list_or_keys),
+    ] = ("cost",)
     loads: tuple[Load, ...] = ()
     bus_capacitance: Capacitance = 0.0
     axes: tuple[Axis, ...]

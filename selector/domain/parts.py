@@ -10,7 +10,7 @@ import re
 from decimal import Decimal
 from typing import Annotated, Any, Literal
 
-from pydantic import BeforeValidator, Field, model_validator
+from pydantic import BeforeValidator, Discriminator, Field, Tag, model_validator
 from pydantic_core import PydanticCustomError
 
 from .fields import (
@@ -45,6 +45,7 @@ from .fields import (
     YesNo,
     _money,
     fault,
+    list_or_keys,
     listed,
 )
 
@@ -106,7 +107,9 @@ class Part(Record):
         for quantity, price in data["price"].items():
             place = ("price", quantity)
             if not re.fullmatch("[1-9][0-9]{0,8}", str(quantity)):
-                raise fault("no-count", "price steps such as 10: 21.50", "quantity on the left", place)
+                raise fault(
+                    "no-count", "price steps such as 10: 21.50", "quantity on the left", place
+                )
             try:
                 steps.append((int(quantity), _money(price)))
             except PydanticCustomError as error:
@@ -183,8 +186,8 @@ class Motor(Part):
         if len(set(self.joinings)) != len(self.joinings):
             raise fault("contradiction", "each joining once", at=("joinings",))
         teeth = 90.0 / self.step_angle
-        if abs(teeth - round(teeth)) > 1e-6:
-            expected = "a step_angle that divides 90 deg, such as 1.8 deg"
+        if abs(teeth - round(teeth)) > 1e-6 or teeth > 900.5:
+            expected = "a step_angle of 0.1 deg or more that divides 90 deg, such as 1.8 deg"
             raise fault("contradiction", expected, at=("step_angle",))
         return self
 
@@ -217,13 +220,8 @@ class SettingRange(Record):
     def settings(self) -> tuple[float, ...]:
         """Every setting, the largest included. [A]"""
         count = int((self.max - self.min) / self.step + 1e-9) + 1
-        return tuple(round(self.min + k * self.step, 9) for k in range(count))
-
-
-def _numbers(value: Any) -> Any:
-    if isinstance(value, list):
-        return tuple(int(v) if isinstance(v, str) and v.isdigit() else v for v in value)
-    return value
+        steps = [round(self.min + k * self.step, 9) for k in range(count)]
+        return tuple(steps if steps[-1] > self.max * (1 - 1e-9) else [*steps, self.max])
 
 
 class Driver(Part):
@@ -231,9 +229,13 @@ class Driver(Part):
 
     channels: Count = 1
     supply_voltage: VoltageRange
-    current_settings: tuple[Current, ...] | SettingRange
+    current_settings: Annotated[
+        Annotated[tuple[Current, ...], BeforeValidator(listed), Tag("list")]
+        | Annotated[SettingRange, Tag("keys")],
+        Discriminator(list_or_keys),
+    ]
     current_basis: Literal["peak", "rms"]
-    microsteps: Annotated[tuple[Count, ...], BeforeValidator(_numbers)]
+    microsteps: Annotated[tuple[Count, ...], BeforeValidator(listed)]
     max_step_rate: Frequency | None = None
     switch_resistance: ResistanceFromZero | None = None
     idle_power: PowerFromZero | None = None
@@ -244,13 +246,6 @@ class Driver(Part):
     bus_capacitance: Capacitance | None = None
     derating: tuple[DeratingStep, ...] = ()
     max_ambient: Temperature | None = None
-
-    @model_validator(mode="before")
-    @classmethod
-    def _lists(cls, data: Any) -> Any:
-        if isinstance(data, dict) and isinstance(data.get("current_settings"), str):
-            return data | {"current_settings": [data["current_settings"]]}
-        return data
 
     @model_validator(mode="after")
     def _usable(self) -> Driver:

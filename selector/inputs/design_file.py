@@ -16,8 +16,8 @@ from ..domain.fields import Count, Record, Text, Voltage, fault
 from ..domain.machine import Problem, Source
 from ..domain.results import Answer, AxisChoice, BusChoice, Design, joining_of
 from ..errors import Fault, InputFaults
-from .load import load_problem, read_node, read_record
-from .yaml_text import Node
+from .load import build, exists, load_problem, read_node, short
+from .yaml_text import Node, near_name
 
 FIRST_LINE = "# A design by selector. `selector judge` reads machine, axes and buses.\n"
 
@@ -35,10 +35,14 @@ class DesignFile(Record):
 
     @model_validator(mode="after")
     def _one_bus(self) -> DesignFile:
-        if (self.voltage is None) == (not self.buses):
-            raise fault("missing-key", "either voltage (and supply) or buses", "state one bus")
+        if self.voltage is None and not self.buses:
+            raise fault("missing-key", "voltage (and supply), or buses", "state one bus")
+        if self.buses and (self.voltage is not None or self.supply is not None or self.count != 1):
+            key = next(k for k in ("voltage", "supply", "count") if k in self.model_fields_set)
+            raise fault("contradiction", f"no {key} beside buses", "state it in the bus", (key,))
         if len(self.buses) > 1:
-            raise fault("not-yet", "one bus", "this version judges one bus for all axes")
+            remedy = "this version judges one bus for all axes"
+            raise fault("not-yet", "one bus", remedy, ("buses", 1))
         return self
 
     def design(self) -> Design:
@@ -58,16 +62,39 @@ def load_design(path: str | Path) -> tuple[Problem, Design, tuple[str, ...]]:
         With every fault of the design, its machine and its catalogues.
     """
     file, faults = Path(path), list[Fault]()
-    found, _ = read_record(file, str(path), DesignFile, faults)
-    if found is None:
-        raise InputFaults(faults)
-    problem = load_problem(file.parent / found.machine)
-    design = found.design()
     node, _ = read_node(file, str(path), faults)
-    faults += _unknown_names(problem, design, node, str(path))
-    if faults or node is None:
+    if node is None:
         raise InputFaults(faults)
-    return problem, design, _changed(found.record, problem.sources, file.parent)
+    found = build(DesignFile, node, node.plain(), (), str(path), faults)
+    home = Path(os.path.realpath(file) if file.is_symlink() else file).parent
+    problem = _problem_of(node, home, str(path), faults)
+    if found is None or problem is None:
+        raise InputFaults(faults)
+    design = found.design()
+    faults += _unknown_names(problem, design, node, str(path))
+    if faults:
+        raise InputFaults(faults)
+    return problem, design, _changed(found.record, problem.sources, home)
+
+
+def _problem_of(node: Node, home: Path, shown: str, faults: list[Fault]) -> Problem | None:
+    """The machine a design names and its catalogues, even where the design has other faults."""
+    name = node.value.get("machine")
+    if name is None or not isinstance(name.value, str) or not name.value:
+        return None
+    machine = home / name.value
+    if not exists(machine):
+        near = near_name(machine)
+        hint = f'there is "{near}" beside it' if near else f"nothing at {short(str(machine))}"
+        found = f"machine: {short(name.value)}"
+        place = node.keys["machine"]
+        faults.append(Fault(shown, *place, "missing-file", found, "a machine file", hint))
+        return None
+    try:
+        return load_problem(machine)
+    except InputFaults as error:
+        faults += error.faults
+        return None
 
 
 def check_design(problem: Problem, design: Design) -> None:
@@ -90,41 +117,35 @@ def _unknown_names(problem: Problem, design: Design, node: Node | None, file: st
             known = [p.part for p in getattr(problem.catalogue, kind)]
             near = difflib.get_close_matches(name, known, n=1, cutoff=0.5)
             hint = f'closest: "{near[0]}"' if near else f"the catalogues list {len(known)}"
-            add(path, "unknown-part", f"{path[-1]}: {name}", f"a part among the {kind}", hint)
+            found, expected = f"{path[-1]}: {short(name)}", f"a part among the {kind}"
+            add(path, "unknown-part", found, expected, hint)
         return entry
+
+    def unknown_axis(path: tuple[Any, ...], name: str) -> None:
+        near = difflib.get_close_matches(name, asked, n=1, cutoff=0.5)
+        hint = f'closest: "{near[0]}"' if near else "axes: " + ", ".join(asked)
+        add(path, "unknown-axis", f"axis: {short(name)}", "an axis of the machine", hint)
 
     asked = [axis.axis for axis in problem.machine.axes]
     given = [choice.axis for choice in design.axes]
     for k, choice in enumerate(design.axes):
         if choice.axis not in asked:
-            near = difflib.get_close_matches(choice.axis, asked, n=1, cutoff=0.5)
-            hint = f'closest: "{near[0]}"' if near else "axes: " + ", ".join(asked)
-            add(
-                ("axes", k, "axis"),
-                "unknown-axis",
-                f"axis: {choice.axis}",
-                "an axis of the machine",
-                hint,
-            )
+            unknown_axis(("axes", k, "axis"), choice.axis)
         if given.index(choice.axis) != k:
-            add(("axes", k, "axis"), "doubled-name", f"axis: {choice.axis}", "each axis once")
+            found, remedy = f"axis: {short(choice.axis)}", "drop one of them"
+            add(("axes", k, "axis"), "doubled-name", found, "each axis once", remedy)
         motor = part(("axes", k, "motor"), "motors", choice.motor)
         part(("axes", k, "driver"), "drivers", choice.driver)
         if motor is not None and joining_of(choice, motor.ways) is None:
-            add(
-                ("axes", k, "motor" if choice.joining is None else "joining"),
-                "unknown-joining",
-                f"joining: {choice.joining or 'not stated'}",
-                " or ".join(motor.ways),
-                f"say how {motor.part} is wired",
-            )
+            key = "motor" if choice.joining is None else "joining"
+            found = f"joining: {short(choice.joining)}" if choice.joining else "no joining"
+            near = difflib.get_close_matches(choice.joining or "", motor.ways, n=1, cutoff=0.5)
+            hint = f'closest: "{near[0]}"' if near else f"say how {motor.part} is wired"
+            hint = "leave joining out" if len(motor.ways) == 1 else hint
+            add(("axes", k, key), "unknown-joining", found, " or ".join(motor.ways), hint)
     for missing in [name for name in asked if name not in given]:
-        add(
-            ("axes",),
-            "missing-axis",
-            f'no choice for axis "{missing}"',
-            "every axis of the machine",
-        )
+        found, expected = f'no choice for axis "{missing}"', "every axis of the machine"
+        add(("axes",), "missing-axis", found, expected, "add motor, driver and current for it")
     for k, bus in enumerate(design.buses):
         listed = node is not None and "buses" in node.value
         path: tuple[Any, ...] = ("buses", k) if listed else ()
@@ -132,9 +153,10 @@ def _unknown_names(problem: Problem, design: Design, node: Node | None, file: st
             part((*path, "supply"), "supplies", bus.supply)
         for n, name in enumerate(bus.axes):
             if name not in asked:
-                add((*path, "axes", n), "unknown-axis", name, "an axis of the machine")
+                unknown_axis((*path, "axes", n), name)
         if bus.axes and set(bus.axes) < set(asked):
-            add((*path, "axes"), "not-yet", "axes off the bus", "all axes on the one bus")
+            remedy = "leave axes out to mean all"
+            add((*path, "axes"), "not-yet", "axes off the bus", "all axes on the one bus", remedy)
     return faults
 
 
@@ -143,13 +165,14 @@ def _changed(record: Any, sources: tuple[Source, ...], folder: Path) -> tuple[st
     if not isinstance(record, dict) or not isinstance(record.get("inputs"), list):
         return ()
     before = {
-        os.path.normpath(folder / entry["file"]): entry.get("sha256")
+        os.path.realpath(folder / entry["file"]): (entry["file"], entry.get("sha256"))
         for entry in record["inputs"]
-        if isinstance(entry, dict) and "file" in entry
+        if isinstance(entry, dict) and isinstance(entry.get("file"), str)
+        if "\0" not in entry["file"]
     }
-    now = {os.path.normpath(source.file): source.sha256 for source in sources}
-    changed = [name for name, digest in now.items() if before.get(name) != digest]
-    return (*changed, *(name for name in before if name not in now))
+    now = {os.path.realpath(source.file): source for source in sources}
+    changed = [s.file for key, s in now.items() if before.get(key, ("", ""))[1] != s.sha256]
+    return (*changed, *(name for key, (name, _) in before.items() if key not in now))
 
 
 def save_design(answer: Answer, path: str | Path, record: dict[str, Any]) -> None:
@@ -160,24 +183,27 @@ def save_design(answer: Answer, path: str | Path, record: dict[str, Any]) -> Non
     InputFaults
         If there is no design, the place cannot be written, or something else stands there.
     """
-    file = Path(path)
     if answer.design is None:
-        raise InputFaults([Fault(str(path), 0, 0, "no-design", "no design found", "a design")])
-    if file.exists() and not _is_ours(file):
-        raise InputFaults(
-            [
-                Fault(
-                    str(path),
-                    0,
-                    0,
-                    "occupied",
-                    "a file that selector did not write",
-                    "a new name or an earlier design",
-                    "choose another name",
-                )
-            ]
-        )
-    _write_whole(file, FIRST_LINE + design_text(answer, file.parent, record))
+        raise _unwritable(path, "no-design", "no design found", "a design")
+    file = Path(os.path.realpath(path))
+    try:
+        if file.is_dir():
+            raise _unwritable(path, "folder", "a folder", "a file name", "name a file in it")
+        if file.exists() and not _is_ours(file):
+            found, expected = (
+                "a file that selector did not write",
+                "a new name or an earlier design",
+            )
+            raise _unwritable(path, "occupied", found, expected, "choose another name")
+        _write_whole(file, FIRST_LINE + design_text(answer, file.parent, record))
+    except (OSError, ValueError) as error:
+        found = getattr(error, "strerror", None) or str(error)
+        expected, remedy = "a place that can be written", "check folder, permissions and space"
+        raise _unwritable(path, "unwritable", found, expected, remedy) from None
+
+
+def _unwritable(path: str | Path, *fields: str) -> InputFaults:
+    return InputFaults([Fault(str(path), 0, 0, *fields)])
 
 
 def design_text(answer: Answer, folder: Path, record: dict[str, Any]) -> str:
@@ -185,7 +211,7 @@ def design_text(answer: Answer, folder: Path, record: dict[str, Any]) -> str:
     assert answer.design is not None
 
     def relative(name: str) -> str:
-        return Path(os.path.relpath(name, folder)).as_posix()
+        return Path(os.path.relpath(os.path.realpath(name), folder)).as_posix()
 
     axes = [
         {
@@ -210,29 +236,14 @@ def design_text(answer: Answer, folder: Path, record: dict[str, Any]) -> str:
 
 
 def _is_ours(file: Path) -> bool:
-    try:
-        with file.open("rb") as stream:
-            return stream.readline() == FIRST_LINE.encode()
-    except OSError:
+    if not file.is_file():
         return False
+    with file.open("rb") as stream:
+        return stream.read(len(FIRST_LINE.encode())) == FIRST_LINE.encode()
 
 
 def _write_whole(file: Path, text: str) -> None:
-    try:
-        handle, name = tempfile.mkstemp(prefix=f".{file.name}.", dir=file.parent)
-    except OSError as error:
-        raise InputFaults(
-            [
-                Fault(
-                    str(file),
-                    0,
-                    0,
-                    "unwritable",
-                    error.strerror or str(error),
-                    "a folder that can be written",
-                )
-            ]
-        ) from None
+    handle, name = tempfile.mkstemp(prefix=f".{file.name[:100]}.", suffix=".part", dir=file.parent)
     try:
         with os.fdopen(handle, "w", encoding="utf-8") as stream:
             stream.write(text)
@@ -241,22 +252,9 @@ def _write_whole(file: Path, text: str) -> None:
         mode = file.stat().st_mode & 0o777 if file.exists() else 0o666 & ~_umask()
         Path(name).chmod(mode)
         Path(name).replace(file)
-    except BaseException as error:
+    except BaseException:
         with contextlib.suppress(OSError):
             Path(name).unlink()
-        if isinstance(error, OSError):
-            raise InputFaults(
-                [
-                    Fault(
-                        str(file),
-                        0,
-                        0,
-                        "unwritable",
-                        error.strerror or str(error),
-                        "a place that can be written",
-                    )
-                ]
-            ) from None
         raise
 
 

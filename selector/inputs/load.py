@@ -13,9 +13,12 @@ from ..domain.fields import CURRENCY, Money, Record
 from ..domain.machine import Machine, Problem, Source
 from ..domain.parts import Catalogue, Driver, Motor, Part, Supply
 from ..errors import Fault, InputFaults
-from .yaml_text import Node, parse, read_text
+from .yaml_text import Node, near_name, parse, read_text
 
 KINDS: dict[str, type[Part]] = {"motors": Motor, "drivers": Driver, "supplies": Supply}
+LISTS_OR_KEYS = ("current_settings", "minimise")  # fields that take either
+COMPUTED = ("origin", "price_table")  # fields of parts that no file states
+LONGEST_SHOWN = 60
 R = TypeVar("R", bound=Record)
 
 
@@ -34,21 +37,14 @@ def load_problem(path: str | Path) -> Problem:
     machine = build(Machine, node, node.plain(), (), str(path), faults)
     files: list[Path] = []
     for name, place in _catalogue_names(node):
-        found = catalogue_files(Path(path).parent / name, faults)
-        if not found[:1] or found[0].exists():
-            files += found
-        else:
-            near = catalogue_files(Path(path).parent / name, [])[0]
-            faults.append(
-                Fault(
-                    str(path),
-                    *place,
-                    "missing-file",
-                    f"catalogues: {name}",
-                    "a catalogue file or folder",
-                    f"nothing at {near}",
-                )
-            )
+        named = Path(path).parent / name
+        if exists(named):
+            files += catalogue_files(named, faults)
+            continue
+        near = near_name(named)
+        hint = f'there is "{near}" beside it' if near else f"nothing at {short(str(named))}"
+        found, expected = f"catalogues: {short(name)}", "a catalogue file or folder"
+        faults.append(Fault(str(path), *place, "missing-file", found, expected, hint))
     catalogue, sources = _read_catalogue(files, faults)
     if faults or machine is None:
         raise InputFaults(faults)
@@ -64,6 +60,14 @@ def _catalogue_names(root: Node) -> list[tuple[str, tuple[int, int]]]:
         return []
     listed = node.value if isinstance(node.value, list) else [node]
     return [(n.value, (n.line, n.column)) for n in listed if isinstance(n.value, str) and n.value]
+
+
+def exists(path: Path) -> bool:
+    """Whether there is such a file or folder, as far as anybody may look."""
+    try:
+        return path.exists()
+    except (OSError, ValueError):  # a name too long, or a folder that cannot be searched
+        return False
 
 
 def load_catalogue(path: str | Path) -> Catalogue:
@@ -83,11 +87,18 @@ def load_catalogue(path: str | Path) -> Catalogue:
 
 def catalogue_files(path: Path, faults: list[Fault]) -> list[Path]:
     """The files a catalogue path means, in order of name."""
-    if not path.is_dir():
-        return [path]
-    files = sorted(p for p in path.iterdir() if p.suffix in (".yaml", ".yml"))
+    try:
+        if not path.is_dir():
+            return [path]
+        files = sorted(p for p in path.iterdir() if p.suffix in (".yaml", ".yml"))
+    except OSError as error:
+        found = error.strerror or str(error)
+        faults.append(Fault(str(path), 0, 0, "unreadable", found, "a folder that can be read"))
+        return []
     if not files:
-        faults.append(Fault(str(path), 0, 0, "empty-folder", "no .yaml file", "catalogue files"))
+        remedy = "put .yaml files into it or name another folder"
+        found, expected = "no .yaml file", "catalogue files"
+        faults.append(Fault(str(path), 0, 0, "empty-folder", found, expected, remedy))
     return files
 
 
@@ -100,30 +111,13 @@ def read_node(path: Path, shown: str, faults: list[Fault]) -> tuple[Node | None,
     node, found = parse(text, shown)
     faults += found
     if node is not None and not isinstance(node.value, dict):
-        faults.append(
-            Fault(
-                shown,
-                node.line,
-                node.column,
-                "wrong-shape",
-                "a list or bare text",
-                "keys with values at the top of the file",
-            )
-        )
+        found_shape = "a list" if isinstance(node.value, list) else "bare text"
+        expected = "keys with values at the top of the file"
+        place = (node.line, node.column)
+        if not node.spoiled:
+            faults.append(Fault(shown, *place, "wrong-shape", found_shape, expected))
         node = None
     return node, Source(file=shown, sha256=hashlib.sha256(data).hexdigest())
-
-
-def read_record(
-    path: Path, shown: str, record: type[R], faults: list[Fault]
-) -> tuple[R | None, Source | None]:
-    """A whole file as one record; faults of form and meaning go into ``faults``."""
-    before = len(faults)
-    node, source = read_node(path, shown, faults)
-    if node is None:
-        return None, source
-    made = build(record, node, node.plain(), (), shown, faults)
-    return (made if len(faults) == before else None), source
 
 
 def build(
@@ -134,74 +128,105 @@ def build(
         return record.model_validate(data)
     except ValidationError as error:
         for detail in error.errors(include_url=False):
-            faults.append(_fault(record, root, path, dict(detail), file))
+            loc = path + _as_written(detail["loc"])
+            if not _spoiled(root, loc):
+                faults.append(_fault(record, root, path, dict(detail), file))
         return None
+
+
+def _as_written(loc: tuple[Any, ...]) -> tuple[Any, ...]:
+    """A path without the steps that only tell a list from keys."""
+    before = (None, *loc)
+    return tuple(
+        step
+        for k, step in enumerate(loc)
+        if not (before[k] in LISTS_OR_KEYS and step in ("list", "keys"))
+    )
+
+
+def _spoiled(root: Node, path: tuple[Any, ...]) -> bool:
+    """Whether the form of the value at the end of a path is at fault already."""
+    node = root
+    for step in path:
+        inside = step in node.value if isinstance(node.value, dict) else isinstance(step, int)
+        if not inside or isinstance(node.value, str):
+            return False
+        node = node.value[step]
+    return node.spoiled
 
 
 def _fault(
     record: type[Record], root: Node, path: tuple[Any, ...], detail: dict[str, Any], file: str
 ) -> Fault:
-    loc = tuple(step for step in detail["loc"] if not _is_branch(step))
-    node, place = root.at(path + loc)
-    key = str(loc[-1]) if loc else ""
     context = detail.get("ctx", {})
+    loc = (*_as_written(detail["loc"]), *context.get("at", ()))
+    node, place = root.at(path + loc)
+    keys = [step for step in loc if isinstance(step, str)]
+    key = keys[-1] if keys else ""
     kind = detail["type"]
-    if kind == "extra_forbidden":
-        known = _known_keys(record, loc[:-1])
-        near = difflib.get_close_matches(key, known, n=1, cutoff=0.6)
-        hint = f'closest known key: "{near[0]}"' if near else "known: " + ", ".join(known)
-        return Fault(file, *place, "unknown-key", _written(key, node), "a key known here", hint)
     if kind == "missing":
-        owner, place = root.at(path + loc[:-1])
-        what = _named(owner)
-        return Fault(
-            file,
-            owner.line,
-            owner.column,
-            "missing-key",
-            f"no {key}{what}",
-            f"{key}",
-            "add the key",
-        )
+        owner, _ = root.at(path + loc[:-1])
+        found, place = f"no {key}{_named(owner, ' in ')}", (owner.line, owner.column)
+        return Fault(file, *place, "missing-key", found, key, "add the key")
+    if isinstance(node.value, dict) and (not loc or isinstance(loc[-1], int)):
+        key = ""
+    found = _written(key, node) if path + loc else "the whole file"
+    if kind == "extra_forbidden":
+        hint = _known(key, _known_keys(record, loc[:-1]))
+        return Fault(file, *place, "unknown-key", found, "a key known here", hint)
     if kind == "selector":
-        return Fault(
-            file,
-            *place,
-            context["name"],
-            _written(key, node),
-            context["expected"],
-            context["remedy"],
-        )
+        return Fault(file, *place, context["name"], found, context["expected"], context["remedy"])
     if kind == "literal_error":
-        found = str(node.value)
         choices = [c.strip("'") for c in context["expected"].replace(" or ", ", ").split(", ")]
-        near = difflib.get_close_matches(found, choices, n=1, cutoff=0.5)
+        near = difflib.get_close_matches(str(node.value)[:LONGEST_SHOWN], choices, n=1, cutoff=0.5)
         hint = f'did you mean "{near[0]}"?' if near else ""
-        return Fault(file, *place, "unknown-word", _written(key, node), " or ".join(choices), hint)
-    shape = "a list, each item after a dash" if "tuple" in kind else "keys with values"
-    return Fault(file, *place, "wrong-shape", _written(key, node), shape)
+        words = f"{', '.join(choices[:-1])} or {choices[-1]}" if choices[1:] else choices[0]
+        return Fault(file, *place, "unknown-word", found, words, hint)
+    if "tuple" in kind or "list" in kind:
+        return Fault(file, *place, "wrong-shape", found, "a list, each item after a dash")
+    if "string" in kind or "float" in kind:
+        return Fault(file, *place, "wrong-shape", found, "one value")
+    return Fault(file, *place, "wrong-shape", found, "keys with values")
 
 
-def _is_branch(step: Any) -> bool:
-    """Whether pydantic put the step there to name a branch of a union, not a key."""
-    return isinstance(step, str) and ("[" in step or step in ("SettingRange", "Worth"))
+def _known(key: str, known: list[str]) -> str:
+    """The key that was meant, or all there are."""
+    near = difflib.get_close_matches(key[:LONGEST_SHOWN], known, n=1, cutoff=0.6)
+    return f'closest known key: "{near[0]}"' if near else "known: " + ", ".join(known)
+
+
+def short(text: str) -> str:
+    """A text cut to what a message has room for."""
+    text = " ".join(text.splitlines())
+    return text if len(text) <= LONGEST_SHOWN else text[: LONGEST_SHOWN - 3] + "..."
 
 
 def _written(key: str, node: Node) -> str:
-    value = node.value
-    if isinstance(value, str):
-        shown = value if len(value) <= 60 else value[:57] + "..."
-        return f"{key}: {shown}".replace("\n", " ") if key and not key.isdigit() else shown
-    if isinstance(value, dict):
-        return f"{key}{_named(node)}".strip() or "this entry"
-    return f"{key}: a list" if key else "a list"
+    """A key and its value as in the file, cut to one line."""
+    if not key and (name := _named(node)):
+        return name
+    return short(f"{key}: {_flow(node)}" if key else _flow(node))
 
 
-def _named(node: Node) -> str:
+def _flow(node: Node, depth: int = 0) -> str:
+    """A value on one line; no more of a long one than anybody reads."""
+    if isinstance(node.value, str):
+        return node.value
+    if depth > 3:
+        return "..."
+    if isinstance(node.value, list):
+        return "[" + ", ".join(_flow(item, depth + 1) for item in node.value[:9]) + "]"
+    items = list(node.value.items())[:9]
+    return "{" + ", ".join(f"{key}: {_flow(item, depth + 1)}" for key, item in items) + "}"
+
+
+def _named(node: Node, before: str = "") -> str:
+    """How an entry calls itself, such as ``part "A1"``; nothing where it has no name."""
     if isinstance(node.value, dict):
-        for key in ("part", "axis", "point", "load", "name"):
-            if key in node.value and isinstance(node.value[key].value, str):
-                return f' in {key} "{node.value[key].value}"'
+        for key in ("part", "axis", "point", "load"):
+            name = node.value.get(key)
+            if name is not None and isinstance(name.value, str) and name.value:
+                return f'{before}{key} "{short(name.value)}"'
     return ""
 
 
@@ -210,7 +235,7 @@ def _known_keys(record: type[Record], loc: tuple[Any, ...]) -> list[str]:
     for step in loc:
         if isinstance(step, str) and step in getattr(fields, "model_fields", {}):
             fields = _record_in(fields.model_fields[step].annotation) or fields
-    return [name for name in fields.model_fields if name not in ("origin", "price_table")]
+    return [name for name in fields.model_fields if name not in COMPUTED]
 
 
 def _record_in(annotation: Any) -> type[BaseModel] | None:
@@ -237,60 +262,49 @@ def _read_catalogue(files: list[Path], faults: list[Fault]) -> tuple[Catalogue, 
 
 def _read_parts(root: Node, file: str, parts: dict[str, list[Part]], faults: list[Fault]) -> None:
     currency = root.value.get("currency")
-    known = [*KINDS, "currency", "note"]
     if currency is not None and not CURRENCY.match(str(currency.value)):
-        faults.append(
-            Fault(
-                file,
-                *root.keys["currency"],
-                "no-currency",
-                _written("currency", currency),
-                "three capitals such as EUR",
-            )
-        )
-        return
+        if not currency.spoiled:
+            found, expected = _written("currency", currency), "three capitals such as EUR"
+            faults.append(Fault(file, *root.keys["currency"], "no-currency", found, expected))
+        currency = Node("XXX", currency.line, currency.column)
     for key, node in root.value.items():
-        if key not in known:
-            near = difflib.get_close_matches(key, known, n=1, cutoff=0.6)
-            hint = f'closest known key: "{near[0]}"' if near else "known: " + ", ".join(known)
-            faults.append(
-                Fault(file, *root.keys[key], "unknown-key", f"{key}:", "a kind of part", hint)
-            )
+        if key not in (*KINDS, "currency", "note"):
+            hint = _known(key, [*KINDS, "currency", "note"])
+            found, expected = _written(key, node), "a kind of part"
+            faults.append(Fault(file, *root.keys[key], "unknown-key", found, expected, hint))
         elif key in KINDS and not isinstance(node.value, list):
-            faults.append(
-                Fault(
-                    file,
-                    *root.keys[key],
-                    "wrong-shape",
-                    _written(key, node),
-                    "a list of parts, each after a dash",
-                )
-            )
+            if not node.spoiled:
+                found, expected = _written(key, node), "a list of parts, each after a dash"
+                faults.append(Fault(file, *root.keys[key], "wrong-shape", found, expected))
         elif key in KINDS:
             for index, entry in enumerate(node.value):
-                data = entry.plain()
+                data = _without_computed(entry, KINDS[key], file, faults)
                 made = build(KINDS[key], root, data, (key, index), file, faults)
                 if made is not None:
                     origin = f"{file}:{entry.line}:{entry.column}"
                     parts[key].append(_placed(made, origin, currency, faults))
 
 
+def _without_computed(entry: Node, kind: type[Part], file: str, faults: list[Fault]) -> Any:
+    """An entry's data; fields that are not the user's to state are unknown keys."""
+    data = entry.plain()
+    if not isinstance(data, dict):
+        return data
+    for key in COMPUTED:
+        if data.pop(key, None) is not None:
+            hint = _known(key, _known_keys(kind, ()))
+            found, expected = _written(key, entry.value[key]), "a key known here"
+            faults.append(Fault(file, *entry.keys[key], "unknown-key", found, expected, hint))
+    return data
+
+
 def _placed(part: Part, origin: str, currency: Node | None, faults: list[Fault]) -> Part:
     price = part.price
     if price is not None and price.currency is None:
         if currency is None:
-            file, line, column = origin.rsplit(":", 2)
-            faults.append(
-                Fault(
-                    file,
-                    int(line),
-                    int(column),
-                    "no-currency",
-                    f'price of "{part.part}" without currency',
-                    "a currency",
-                    "put `currency: EUR` at the top of the file",
-                )
-            )
+            found, remedy = f'price of "{part.part}" without currency', "currency: EUR"
+            remedy = f"put `{remedy}` at the top of the file"
+            faults.append(_at(origin, "no-currency", found, "a currency", remedy))
         else:
             price = Money(price.amount, str(currency.value))
     return part.model_copy(update={"origin": origin, "price": price})
@@ -301,16 +315,12 @@ def _refuse_doubled(parts: dict[str, list[Part]], faults: list[Fault]) -> None:
     for entries in parts.values():
         for entry in entries:
             if entry.part in seen:
-                file, line, column = entry.origin.rsplit(":", 2)
-                faults.append(
-                    Fault(
-                        file,
-                        int(line),
-                        int(column),
-                        "doubled-part",
-                        f"part: {entry.part}",
-                        "a name of its own for each part",
-                        f"it stands at {seen[entry.part].origin} already",
-                    )
-                )
+                found, expected = f"part: {short(entry.part)}", "a name of its own for each part"
+                remedy = f"it stands at {seen[entry.part].origin} already; rename one"
+                faults.append(_at(entry.origin, "doubled-part", found, expected, remedy))
             seen.setdefault(entry.part, entry)
+
+
+def _at(origin: str, *fields: str) -> Fault:
+    file, line, column = origin.rsplit(":", 2)
+    return Fault(file, int(line), int(column), *fields)

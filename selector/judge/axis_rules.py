@@ -319,6 +319,9 @@ def torque_headroom(case: AxisCase) -> Findings:
         f"at {worst.speed * 30 / 3.141592653589793:.0f} rpm",
         least,
     )
+    if worst.stalled:
+        note = f"{found.note} no torque is left"
+        found = found.model_copy(update={"state": "fails", "note": note})
     if unknown and found.state == "passes":
         note = f"{found.note}; {case.motor.part} states no rotor_inertia, which counts here"
         found = found.model_copy(update={"state": "unknown", "note": note})

@@ -38,6 +38,11 @@ class Judged:
         """Usable over required, minus 1; None where nothing is required."""
         return float(self.chain.usable) / self.required - 1.0 if self.required > 0 else None
 
+    @property
+    def stalled(self) -> bool:
+        """Whether no torque is left, so that the motor does not even turn by itself."""
+        return self.speed > 0 and float(self.chain.usable) <= 0.0
+
 
 @dataclass(frozen=True)
 class AxisCase:
@@ -219,15 +224,8 @@ class AxisCase:
     def speeds(self, point: Point) -> list[float]:
         """Speeds the point is judged at."""
         I, R, L = self.choice.peak, self.resistance, self.joined.inductance
-        corner = torque.corner_speed(self.voltage, 0.0, I, R, L, self.K, self.N)
-        i_q = min(I, max(-I, self.shaft_torque(point) / self.K))
-        i_d = max(0.0, I * I - i_q * i_q) ** 0.5
-        top = power.SQUARE_WAVE * self.voltage
-        kink = torque.corner_speed(top, i_d, i_q, R, L, self.K, self.N)
-        return [
-            float(s)
-            for s in torque.judged_speeds(point.speed, point.from_rest, float(corner), float(kink))
-        ]
+        corner = float(torque.corner_speed(self.voltage, 0.0, I, R, L, self.K, self.N))
+        return [float(s) for s in torque.judged_speeds(point.speed, point.from_rest, corner)]
 
     @cached_property
     def judged(self) -> list[Judged]:
@@ -265,7 +263,7 @@ class AxisCase:
 
         def key(j: Judged) -> tuple[float, float]:
             headroom = float("inf") if j.headroom is None else round(j.headroom, 9)
-            return headroom, -j.speed
+            return (-1.0 if j.stalled else headroom), -j.speed
 
         return min(self.judged, key=key)
 
@@ -297,7 +295,28 @@ class AxisCase:
     @cached_property
     def peak_power(self) -> float:
         """Largest bus power over the points, the way to them, and rest. [W]"""
-        return max([self.rest_power, *(self.power_at(j.speed, j.point) for j in self.judged)])
+        J = self.joined
+        return max(
+            self.rest_power,
+            *(
+                float(
+                    power.peak_bus_power(
+                        p.speed,
+                        p.from_rest,
+                        self.shaft_torque(p),
+                        self.voltage,
+                        self.choice.peak,
+                        self.resistance,
+                        J.inductance,
+                        self.K,
+                        self.N,
+                        J.holding_torque,
+                        self.driver.idle,
+                    )
+                )
+                for p in self.axis.points
+            ),
+        )
 
     @cached_property
     def mean_power(self) -> float:

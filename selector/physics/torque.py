@@ -235,7 +235,7 @@ def corner_speed(
     half_b = R * i_q * K
     c = R**2 * (i_d**2 + i_q**2) - voltage**2
     root = np.sqrt(np.maximum(half_b**2 - a * c, 0.0))
-    return np.maximum((root - half_b) / a, 0.0)
+    return np.where(c < 0.0, np.maximum((root - half_b) / a, 0.0), 0.0)
 
 
 def pullout_torque(
@@ -407,10 +407,8 @@ def microstep_factor(microsteps: Numbers) -> Numbers:
     return np.interp(np.log2(microsteps), [0.0, 1.0, 2.0, 3.0], [0.51, 0.70, 0.94, 1.0])
 
 
-def judged_speeds(
-    speed: Numbers, from_rest: bool, corner: Numbers, power_corner: Numbers
-) -> list[Numbers]:
-    """Speeds at which a demand point is judged: itself, and those passed on the way from rest.
+def judged_speeds(speed: Numbers, from_rest: bool, corner: Numbers) -> list[Numbers]:
+    """Speeds at which a point's torque is judged: its own, and those passed on the way from rest.
 
     Parameters
     ----------
@@ -418,29 +416,27 @@ def judged_speeds(
         Of the point. [rad/s]
     from_rest : bool
         Whether the axis gets there from rest under the same torque. [-]
-    corner, power_corner : float or array
-        Speeds where full current uses up the voltage; see :func:`corner_speed`. [rad/s]
+    corner : float or array
+        Speed where full current uses up the voltage; see :func:`corner_speed`. [rad/s]
 
     Returns
     -------
     list
-        The speed itself last; before it eighths of it and both corners, cut to the speed. [rad/s]
+        The speed itself last; before it eighths of it and the corner, cut to the speed. [rad/s]
 
     Notes
     -----
-    Standing: derived. Torque kinks at the corner and bus power peaks near it, so a grid alone
-    could step over the worst place.
+    Standing: derived. Torque kinks at the corner, so a grid alone could step over it.
 
     Examples
     --------
-    >>> [float(s) for s in judged_speeds(8.0, False, 5.0, 6.0)]
+    >>> [float(s) for s in judged_speeds(8.0, False, 5.0)]
     [8.0]
     """
     if not from_rest:
         return [speed + 0.0 * corner]
     grid = [fraction * speed + 0.0 * corner for fraction in SPEED_FRACTIONS[:-1]]
-    kinks = [np.minimum(corner, speed), np.minimum(power_corner, speed)]
-    return [*grid, *kinks, speed + 0.0 * corner]
+    return [*grid, np.minimum(corner, speed), speed + 0.0 * corner]
 
 
 def torque_chain(

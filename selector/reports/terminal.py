@@ -22,11 +22,18 @@ RPM = 30 / 3.141592653589793
 MANY = 12  # rows a list may have before it is cut
 
 
+class _Console(Console):
+    """Leaves a reader that went away to the command line, which ends the run in silence."""
+
+    def on_broken_pipe(self) -> None:
+        raise BrokenPipeError
+
+
 def console(stream: TextIO) -> Console:
     """A console of the report's width; colour only on a terminal that wants it."""
     plain = not stream.isatty() or "NO_COLOR" in os.environ
     width = WIDTH if not stream.isatty() else min(WIDTH, Console(file=stream).width)
-    return Console(
+    return _Console(
         file=stream,
         width=width,
         no_color=plain,
@@ -100,16 +107,25 @@ def money(amount: float | None, currency: str) -> str:
 # -- faults -----------------------------------------------------------------------------------
 
 
-def print_faults(faults: Sequence[Fault], stream: TextIO) -> None:
+def print_faults(
+    faults: Sequence[Fault], stream: TextIO, outcome: str = "nothing was computed"
+) -> None:
     """Every fault with its place, what was found, what was expected and what to do."""
     for fault in faults:
         place = f"{fault.file}:{fault.line}:{fault.column}" if fault.line else fault.file
-        print(f"{place}: {fault.name}", file=stream)
-        print(f"    {fault.found}", file=stream)
         remedy = f"; {fault.remedy}" if fault.remedy else ""
-        print(f"  expected {fault.expected}{remedy}", file=stream)
+        print(visible(f"{place}: {fault.name}"), file=stream)
+        print(visible(f"    {fault.found}"), file=stream)
+        print(visible(f"  expected {fault.expected}{remedy}"), file=stream)
     count = len(faults)
-    print(f"{count} fault{'s' if count > 1 else ''}; nothing was computed", file=stream)
+    print(f"{count} fault{'s' if count > 1 else ''}; {outcome}", file=stream)
+
+
+def visible(text: str) -> str:
+    """Text with its control characters spelled out, so that none reaches the terminal."""
+    return "".join(
+        c if c.isprintable() or c == "\xa0" else c.encode("unicode_escape").decode() for c in text
+    )
 
 
 # -- pick and judge ---------------------------------------------------------------------------

@@ -36,7 +36,6 @@ Array = Any
 SUPPLY, BRAKING, STOCK, STARTUP = ("supply power", "braking rise", "stock", "start-up capacitance")
 LIMITS = ("the price limit", "the volume limit", "the mass limit")
 RULES = (SUPPLY, BRAKING, STOCK, STARTUP, *LIMITS)
-UNLIMITED = 2**50
 
 
 @dataclass
@@ -87,24 +86,29 @@ def reduced_feeds(offers: Offers, feeds: list[Feed]) -> list[Feed]:
     if not feeds:
         return []
     key = [[*(f.count * g.of(f.supply) for g in offers.goals), int(f.trimmed)] for f in feeds]
-    others = [_feed_figures(f) for f in feeds]
-    rows = undominated(np.array(key, dtype=np.int64), np.array(others, dtype=np.int64))
+    others = [_feed_figures(offers, f) for f in feeds]
+    rows = undominated(np.array(key, dtype=np.int64), np.array(others))
     return [feeds[k] for k in rows]
 
 
-def _feed_figures(feed: Feed) -> list[int]:
-    """Everything a row sees of a feed, as integers of which smaller is better."""
+def _feed_figures(offers: Offers, feed: Feed) -> list[float]:
+    """Everything a row sees of a feed, smaller being better: its integer, or the figure itself."""
     supply = feed.supply
     startup, trip = supply.largest_startup_capacitance, supply.overvoltage_trip
-    held = feed.count * (supply.output_capacitance or 0.0)
     return [
         *(feed.count * amount(supply) for amount in AMOUNTS),
-        -int(down(feed.power, POWER_SCALE)),
-        -int(down(held, CAPACITANCE_SCALE * 1000)),
-        -(UNLIMITED if trip is None else int(down(trip, 1000))),
-        -(UNLIMITED if startup is None else int(down(feed.count * startup, CAPACITANCE_SCALE))),
+        -usable_power(offers, feed),
+        -feed.count * (supply.output_capacitance or 0.0),
+        -np.inf if trip is None else -trip,
+        -np.inf if startup is None else -int(down(feed.count * startup, CAPACITANCE_SCALE)),
         -int(supply.absorbs_energy),
     ]
+
+
+def usable_power(offers: Offers, feed: Feed) -> int:
+    """Power a feed may be asked for: derated, less the margin, in steps."""
+    margin = 1.0 + offers.problem.machine.margins.supply
+    return int(down(feed.power / margin, POWER_SCALE))
 
 
 def reduced_options(offers: Offers, options: Options, startup: bool) -> Options:
@@ -122,7 +126,7 @@ def reduced_options(offers: Offers, options: Options, startup: bool) -> Options:
     options = options.pick(np.lexsort(place))
     goals = t["winding_goals"][options.winding] + t["driver_goals"][options.driver]
     key = np.column_stack([goals, up(options.mean, POWER_SCALE)])
-    held = down(t["C"][options.driver], CAPACITANCE_SCALE * 1000)
+    held = t["C"][options.driver]
     others = np.column_stack(
         [
             t["winding_amounts"][options.winding] + t["driver_amounts"][options.driver],
@@ -178,9 +182,8 @@ class BusModel:
 
     def _supply_rows(self, bus: int) -> None:
         """Mean power, and the peak of each stage, within the derated rating less its margin."""
-        margin = 1.0 + self.machine.margins.supply
         fixed = int(up(self.machine.fixed_power, POWER_SCALE))
-        gives = self._over_feeds(lambda f: -int(down(f.power / margin, POWER_SCALE)), bus)
+        gives = self._over_feeds(lambda f: -usable_power(self.offers, f), bus)
         mean = self._over_axes(lambda o: up(o.mean, POWER_SCALE), bus)
         self.model.add_row(mean | gives, -fixed, None, SUPPLY)
         names = [axis.axis for axis in self.machine.axes]

@@ -1,12 +1,13 @@
 """Every motor × joining × driver × setting × bus voltage of an axis, judged in arrays.
 
 For one pair of motor and driver at one voltage the settings are tried from the smallest that
-could do upwards, and the first adequate one is kept: with the same parts a larger setting never
-takes less power at any demand point nor runs cooler (the current vector is at least as long), and
-nothing else a limit or goal sees depends on it. Only an axis that lowers its current at rest goes
-on until its share at rest is the driver's smallest, because a larger setting may then allow a
-smaller share. For the same reason
-a setting that runs too hot ends the row.
+could do upwards. A row ends at an adequate setting when no larger one can matter: at every point
+the full current flows even with the winding at its limit, so a larger setting, whose winding is at
+most that hot, makes a current vector at least as long at every speed: no less power, no cooler.
+Where the bus cannot drive the full current this is not so (a hotter winding draws less there), nor
+where the load drives the motor, nor where the axis may fall to a smaller share at rest; there the
+row goes on, and dominance chooses. A setting that runs too hot ends a row whose points are in
+reach, for with the winding at its limit a larger one makes at least as much heat.
 """
 
 from __future__ import annotations
@@ -263,7 +264,10 @@ class AxisTable:
             usable = np.abs(self._shaft_torque(point)) * (1.0 + machine.margins.torque)
             least = self._modelled(usable)[:, None, None] / K
             share = torque.voltage_share(point.speed, V, least, R, L, K, N)
-            damped = usable[:, None, None] / torque.damping_factor(share, ratio)
+            damping = torque.damping_factor(share, ratio)
+            wanted = np.broadcast_to(usable[:, None, None], damping.shape)
+            with np.errstate(divide="ignore"):
+                damped = np.divide(wanted, damping, out=np.zeros(damping.shape), where=wanted > 0)
             detent = np.where(usable > 0, t["detent"], 0.0)[:, None, None]
             i_q = (damped + detent) / torque.MODEL_FACTOR / K * (1 - GUARD)
             X = N * point.speed * L
@@ -369,16 +373,13 @@ class AxisTable:
         exists = ~np.isnan(self._setting(tried.winding, tried.driver, tried.rank))
         row, tried = row[exists], tried.pick(exists)
         self.tried += len(tried)
-        adequate, hopeless, options = _Judged(self, tried).outcome()
+        judged = _Judged(self, tried)
+        adequate, hopeless, options = judged.outcome()
         going = np.ones(len(rows), dtype=bool)
         going[row[hopeless]] = False
-        if self.axis.reduce_at_rest:  # a larger setting may still allow a smaller share at rest
-            least = self.least_share[options.driver]
-            going[row[adequate][options.rest_share <= least]] = False
-        else:  # the first adequate setting of a row ends it
-            done, first = np.unique(row[adequate], return_index=True)
-            going[done] = False
-            options = options.pick(first)
+        least = self.least_share[options.driver]
+        over = row[adequate][judged.full_flow()[adequate] & (options.rest_share <= least)]
+        going[over] = False
         found.append(options)
         return going
 
@@ -526,8 +527,36 @@ class _Judged:
         too_hot = self.temperature > limit - 1e-6
         rise = self.temperature - self.machine.ambient
         ratio = rise / np.maximum(limit - self.machine.ambient, 1e-9)
-        self.hopeless |= too_hot & self.alive
+        self.hopeless |= too_hot & self.alive & self.reached()
         self.fail("winding temperature", too_hot, self.temperature, limit, ratio)
+
+    def reached(self) -> Array:
+        """Rows whose points are in reach of 4/π of the voltage with the winding at its limit.
+
+        Only of these is a larger setting hotter for sure: where a point is out of reach the full
+        setting is counted, and a larger one may reach it with less.
+        """
+        hot = torque.winding_resistance(self.R_25, self.heat_limit) + self.R_b
+        reached = np.ones(len(self.I), dtype=bool)
+        for point in self.axis.points:
+            most = torque.pullout_torque(
+                point.speed, power.SQUARE_WAVE * self.V, self.I, hot, self.L, self.K, self.N
+            )
+            reached &= most >= np.abs(self.signed_torque(point))
+        return reached
+
+    def full_flow(self) -> Array:
+        """Rows in which the full current flows at every point, with the winding at its limit."""
+        hot = torque.winding_resistance(self.R_25, self.heat_limit) + self.R_b
+        flows = np.ones(len(self.I), dtype=bool)
+        for point in self.axis.points:
+            at = self.signed_torque(point)
+            i_q = np.clip(at / self.K, -self.I, self.I)
+            i_d = np.sqrt(np.maximum(self.I**2 - i_q**2, 0.0))
+            volts = power.SQUARE_WAVE * self.V
+            kink = torque.corner_speed(volts, i_d, i_q, hot, self.L, self.K, self.N)
+            flows &= (at >= 0.0) & (kink >= point.speed)
+        return flows
 
     def settled(self, scene: list[tuple[float, Point | None]], rows: Array) -> Array:
         to_air = self.axis.mounting_factor * thermal.thermal_resistance(
@@ -575,9 +604,11 @@ class _Judged:
                 usable = np.zeros(len(self.I))
                 usable[rows] = self.usable(np.stack(speeds), rows, combine).min(axis=0)
                 short = self.alive & (usable < need * (1 + GUARD))
+                if point.speed > 0:  # without any torque left the motor does not turn at all
+                    short |= self.alive & (usable <= 0.0)
                 if combine != stated and short.any():  # say what the nearest miss really has
                     near = np.flatnonzero(short)
-                    near = near[[np.argmax(usable[near] / need[near])]]
+                    near = near[[np.argmax(usable[near] / np.maximum(need[near], 1e-12))]]
                     at = np.stack(self.speeds(point, near)[part])
                     usable[near] = self.usable(at, near, stated).min(axis=0)
                     usable[np.setdiff1d(np.flatnonzero(short), near)] = 0.0
@@ -589,10 +620,7 @@ class _Judged:
         R = torque.winding_resistance(self.R_25[rows], self.temperature[rows]) + self.R_b[rows]
         K, L, N, V, I = (a[rows] for a in (self.K, self.L, self.N, self.V, self.I))
         corner = torque.corner_speed(V, 0.0, I, R, L, K, N)
-        i_q = np.clip(self.signed_torque(point)[rows] / K, -I, I)
-        i_d = np.sqrt(np.maximum(I**2 - i_q**2, 0.0))
-        power_corner = torque.corner_speed(power.SQUARE_WAVE * V, i_d, i_q, R, L, K, N)
-        return torque.judged_speeds(point.speed, point.from_rest, corner, power_corner)
+        return torque.judged_speeds(point.speed, point.from_rest, corner)
 
     def usable(self, speeds: Array, rows: Array, combine: str) -> Array:
         """Usable torque, speeds (one row each) by options (one column each).
@@ -630,21 +658,20 @@ class _Judged:
         )
         peak, mean = resting.copy(), self.axis.rest_share * resting
         for point in self.axis.points:
-            for speed in self.speeds(point, rows):
-                at = power.bus_power(
-                    speed,
-                    self.signed_torque(point)[rows],
-                    self.V[rows],
-                    self.I[rows],
-                    R,
-                    self.L[rows],
-                    self.K[rows],
-                    self.N[rows],
-                    self.T_h[rows],
-                    self.idle[rows],
-                )
-                peak = np.maximum(peak, at)
-            mean = mean + (point.share or 0.0) * np.maximum(at, 0.0)
+            at = (
+                self.signed_torque(point)[rows],
+                self.V[rows],
+                self.I[rows],
+                R,
+                self.L[rows],
+                self.K[rows],
+                self.N[rows],
+                self.T_h[rows],
+                self.idle[rows],
+            )
+            peak = np.maximum(peak, power.peak_bus_power(point.speed, point.from_rest, *at))
+            own = power.bus_power(point.speed, *at)
+            mean = mean + (point.share or 0.0) * np.maximum(own, 0.0)
         picked = self.rows.pick(rows)
         return Options(
             picked.winding,

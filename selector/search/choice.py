@@ -283,10 +283,11 @@ class _Search:
     # -- no design --------------------------------------------------------------------------
 
     def _confirm_none(self) -> None:
+        empty = {id(table) for table in self.bounds.unique if self._has_none(table)}
         names = [
             axis.axis
             for axis, table in zip(self.machine.axes, self.tables, strict=True)
-            if not any(len(o) for o in table.at_rail.values())
+            if id(table) in empty
         ]
         if names:
             self.result.second_route = (
@@ -303,6 +304,13 @@ class _Search:
                 )
         self.result.second_route = f"HiGHS on the same rows, {len(models)} models: infeasible"
         self.result.reasons += self._what_clashes(models)
+
+    def _has_none(self, table: AxisTable) -> bool:
+        """Whether an axis has no adequate option at all, every one of them judged."""
+        if not any(len(o) for o in table.at_rail.values()):
+            self.progress(f"judging parts for axis {table.axis.axis}")
+            table.judge(np.ones_like(table.judged))
+        return not any(len(o) for o in table.at_rail.values())
 
     def _all_models(self) -> Iterator[BusModel]:
         for rail in range(len(self.offers.rails)):

@@ -34,7 +34,8 @@ def undominated(
         What orders designs, integers, smaller is better; rows of equal key go by their number,
         so the caller gives them in order of name.
     others : array, rows × figures
-        Everything else a row of the model sees, integers, smaller is better.
+        Everything else a row of the model sees, smaller is better: its integers, or the figures
+        they are made of.
     stands_in : function of (row, rows), optional
         Which of ``rows`` may replace ``row`` as far as stock goes; all of them if not given.
 
