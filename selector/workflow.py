@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 from . import __version__
 from .domain.machine import Problem
-from .domain.results import Answer, AxisChoice, Design, Goal, Judgement, NextSetting, Proof
+from .domain.results import Answer, Design, Goal, Judgement, NextSetting, Proof
 from .errors import WrongVerdict
 from .inputs.design_file import check_design, load_design, save_design
 from .inputs.load import load_catalogue, load_problem
@@ -45,6 +45,7 @@ def pick(
     WrongVerdict
         If two routes that must agree do not.
     """
+    from .judge import next_settings
     from .search.choice import choose, design_of
 
     result = choose(problem, seconds, progress)
@@ -146,37 +147,3 @@ def _proof(result: Result) -> Proof:
         gap=0.0 if result.verdict == "proved" else gap,
         second_route=result.second_route,
     )
-
-
-def next_settings(problem: Problem, design: Design) -> tuple[NextSetting, ...]:
-    """For each axis, what its driver's next higher setting would give, all else unchanged."""
-    rows = []
-    for number, choice in enumerate(design.axes):
-        driver = problem.catalogue.find("drivers", choice.driver)
-        higher = [s for s in driver.peak_settings if s > choice.peak * (1 + 1e-9)]
-        if not higher:
-            continue
-        changed = choice.model_copy(
-            update={"current_peak": higher[0], "current_rms": None, "rest_current_peak": None}
-        )
-        trial = design.model_copy(update={"axes": _with(design.axes, number, changed)})
-        judgement = judge_design(problem, trial)
-        figures = next(a for a in judgement.axes if a.axis == choice.axis)
-        rows.append(
-            NextSetting(
-                axis=choice.axis,
-                current_peak=higher[0],
-                torque_headroom=figures.torque_headroom,
-                peak_power=figures.peak_power,
-                winding_temperature=figures.winding_temperature,
-                holds=judgement.verdict == "holds",
-                breaks=", ".join(
-                    dict.fromkeys(f.rule for f in judgement.findings if f.state == "fails")
-                ),
-            )
-        )
-    return tuple(rows)
-
-
-def _with(axes: tuple[AxisChoice, ...], number: int, changed: AxisChoice) -> tuple[AxisChoice, ...]:
-    return (*axes[:number], changed, *axes[number + 1 :])

@@ -34,14 +34,26 @@ class AxisChoice(Record):
 
     @model_validator(mode="after")
     def _one_current(self) -> AxisChoice:
-        if (self.current_peak is None) == (self.current_rms is None):
+        if self.current_peak is not None and self.current_rms is not None:
+            raise fault(
+                "contradiction",
+                "one of current_peak and current_rms",
+                "drop one of them",
+                at=("current_rms",),
+            )
+        if self.current_peak is None and self.current_rms is None:
             raise fault(
                 "missing-key",
                 "one of current_peak and current_rms",
                 "state the setting as the driver's sheet does, peak or RMS",
             )
         if self.reduction is not None:
-            raise fault("not-yet", "no reduction", "this version judges axes without reduction")
+            raise fault(
+                "not-yet",
+                "no reduction",
+                "this version judges axes without reduction",
+                at=("reduction",),
+            )
         return self
 
     @property

@@ -66,7 +66,9 @@ def exists(path: Path) -> bool:
     """Whether there is such a file or folder, as far as anybody may look."""
     try:
         return path.exists()
-    except (OSError, ValueError):  # a name too long, or a folder that cannot be searched
+    except PermissionError:  # what reads it will say so
+        return True
+    except (OSError, ValueError):  # a name too long or impossible
         return False
 
 
@@ -93,7 +95,7 @@ def catalogue_files(path: Path, faults: list[Fault]) -> list[Path]:
         files = sorted(p for p in path.iterdir() if p.suffix in (".yaml", ".yml"))
     except OSError as error:
         found = error.strerror or str(error)
-        faults.append(Fault(str(path), 0, 0, "unreadable", found, "a folder that can be read"))
+        faults.append(Fault(str(path), 0, 0, "unreadable", found, "a path that can be read"))
         return []
     if not files:
         remedy = "put .yaml files into it or name another folder"

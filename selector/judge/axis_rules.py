@@ -9,6 +9,7 @@ from ..physics import power, thermal, torque
 from .cases import AxisCase
 
 CLOSE = 1e-9  # relative: float dust only
+SAME_SETTING = 0.005  # of a setting: three digits copied from a sheet, RMS or peak
 Findings = Iterator[Finding]
 
 
@@ -104,8 +105,8 @@ def current_setting(case: AxisCase) -> Findings:
     """The driver has the setting, hot as it is, and the motor bears its peak."""
     subject, peak = case.axis.axis, case.choice.peak
     settings = case.driver.peak_settings
-    on_driver = any(abs(s - peak) <= 1e-6 * s for s in settings)
     nearest = min(settings, key=lambda s: abs(s - peak))
+    on_driver = abs(nearest - peak) <= SAME_SETTING * nearest
     yield finding(
         "setting on the driver",
         subject,

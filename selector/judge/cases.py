@@ -257,7 +257,7 @@ class AxisCase:
             t.combine,
         )
 
-    @property
+    @cached_property
     def worst(self) -> Judged:
         """Where the torque headroom is least; the fastest of equals."""
 
@@ -404,8 +404,12 @@ class BusCase:
     voltage: float
 
     @classmethod
-    def of(cls, problem: Problem, design: Design) -> BusCase:
-        """The case of a design; KeyError names what the problem does not have."""
+    def of(cls, problem: Problem, design: Design, known: BusCase | None = None) -> BusCase:
+        """The case of a design; KeyError names what the problem does not have.
+
+        Axes that stand in ``known`` with the same choice and voltage are taken from it, with what
+        was computed of them.
+        """
         machine, catalogue = problem.machine, problem.catalogue
         bus = design.buses[0]
         unit = None
@@ -413,15 +417,15 @@ class BusCase:
             unit = _found(catalogue.find("supplies", bus.supply), bus.supply)
         spread = SUPPLY_TOLERANCE if unit is None else unit.spread
         choices = {choice.axis: choice for choice in design.axes}
-        cases = []
+        cases: list[AxisCase] = []
         for axis in machine.axes:
             choice = _found(choices.get(axis.axis), axis.axis)
             motor = _found(catalogue.find("motors", choice.motor), choice.motor)
             driver = _found(catalogue.find("drivers", choice.driver), choice.driver)
             joining = _found(joining_of(choice, motor.ways), f"joining of {choice.axis}")
-            cases.append(
-                AxisCase(machine, axis, choice, motor, driver, joining, bus.voltage, spread)
-            )
+            case = AxisCase(machine, axis, choice, motor, driver, joining, bus.voltage, spread)
+            before = known.axes[len(cases)] if known is not None else case
+            cases.append(before if before == case else case)
         return cls(problem, design, tuple(cases), unit, bus.count, bus.voltage)
 
     @property

@@ -65,6 +65,11 @@ PART_UNITS = {
     "largest_startup_capacitance": "F",
     "overvoltage_trip": "V",
     "lead_time": "day",
+    "supply_voltage": "V",
+    "trim": "V",
+    "current_settings": "A",
+    "size": "m",
+    "brake": "N*m",
 }
 
 
@@ -203,9 +208,20 @@ def catalogue_data(catalogue: Catalogue) -> dict[str, Any]:
 
 
 def _part(entry: dict[str, Any]) -> dict[str, Any]:
+    """One catalogue entry with units at every figure that has one."""
     for name, unit in PART_UNITS.items():
-        if isinstance(entry.get(name), float):
-            entry[name] = quantity(entry[name], unit)
+        value = entry.get(name)
+        if isinstance(value, float):
+            entry[name] = quantity(value, unit)
+        elif isinstance(value, dict):
+            entry[name] = {key: quantity(number, unit) for key, number in value.items()}
+        elif isinstance(value, tuple):
+            entry[name] = [quantity(number, unit) for number in value]
+    if entry.get("derating"):
+        entry["derating"] = [
+            {"at": quantity(step["at"], "degC"), "share": step["share"]}
+            for step in entry["derating"]
+        ]
     if entry.get("price") is not None:
         amount, currency = entry["price"]
         entry["price"] = quantity(float(amount), currency)
