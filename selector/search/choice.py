@@ -28,8 +28,8 @@ from .cpsat import CpSat, Deadline
 from .offers import Offers, offers_of
 
 Array = Any
-BATCH = 24  # rails judged at once
-GUESS = 0.06  # how far above the least bound the first goal is guessed, step by step
+BATCH = 64  # rails judged at once
+GUESS = 0.10  # how far above the least bound the first goal is guessed, step by step
 PATIENCE = 10  # steps before they double: a machine without any design must not take for ever
 Progress = Callable[[str], None]
 
