@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 from . import __version__
-from .domain.machine import Problem
-from .domain.results import Answer, Design, Goal, Judgement, NextSetting, Proof
+from .domain.machine import Problem, Worth
+from .domain.results import Answer, Design, Finding, Goal, Judgement, NextSetting, Proof
 from .errors import WrongVerdict
 from .inputs.design_file import check_design, load_design, save_design
 from .inputs.load import load_catalogue, load_problem
@@ -49,7 +49,7 @@ def pick(
     from .search.choice import choose, design_of
 
     result = choose(problem, seconds, progress)
-    design = design_of(result)
+    design = None if result.choice is None else design_of(result.offers, result.choice)
     judgement = None
     following: tuple[NextSetting, ...] = ()
     if design is not None:
@@ -68,7 +68,7 @@ def pick(
             for axis, table in zip(problem.machine.axes, result.tables, strict=True)
             for row in table.rejections()
         ),
-        reasons=tuple(result.reasons),
+        reasons=(*result.reasons, *_reasons(problem, result)),
         proof=_proof(result),
         sources=problem.sources,
         version=__version__,
@@ -95,6 +95,28 @@ def judge_file(path: str | Path) -> Judgement:
     return judge_design(problem, design).model_copy(update={"changed": changed})
 
 
+def _reasons(problem: Problem, result: Result) -> Iterator[str]:
+    """What each rule that stands in the way lacks, in the judge's words and figures."""
+    from .search.choice import design_of
+
+    for about, choice in result.relaxed.items():
+        judgement = judge_design(problem, design_of(result.offers, choice))
+        broken = [f for f in judgement.findings if f.state == "fails"]
+        yield f"without the rule on {about} there would be a design; it breaks: " + "; ".join(
+            _lack(f) for f in broken
+        )
+
+
+def _lack(finding: Finding) -> str:
+    figures = ""
+    if finding.actual is not None and finding.limit is not None:
+        figures = f" {finding.actual.value:.5g} against {finding.limit.value:.5g} "
+        figures += finding.limit.unit if finding.limit.unit != "1" else ""
+    margin = f", margin {100 * finding.margin:g} %" if finding.margin else ""
+    note = f" ({finding.note})" if finding.note else ""
+    return f"{finding.rule} of {finding.subject}{figures.rstrip()}{margin}{note}"
+
+
 def _agree(result: Result, judgement: Judgement) -> None:
     """The judge must let the search's design stand and come to the same goals."""
     failing = [f for f in judgement.findings if f.state == "fails"]
@@ -102,9 +124,15 @@ def _agree(result: Result, judgement: Judgement) -> None:
         said = ", ".join(f"{f.rule} of {f.subject}" for f in failing)
         raise WrongVerdict(f"the judge fails the design that was chosen ({said}); it is withheld")
     assert result.choice is not None
+    totals, worth = judgement.totals, result.offers.problem.machine.minimise
+    figures = totals.model_dump()
+    if isinstance(worth, Worth) and totals.cost is not None:
+        extra = worth.volume * (totals.volume or 0.0) + worth.mass * (totals.mass or 0.0)
+        figures["cost with worths"] = totals.cost + extra
+    units = sum(line.quantity for line in judgement.order)  # each may be rounded by a step
     for goal, value in zip(result.offers.goals, result.choice.values, strict=True):
-        figure = getattr(judgement.totals, goal.name, None)
-        if figure is not None and abs(figure - value / goal.scale) > 64 / goal.scale:
+        figure = figures.get(goal.name)
+        if figure is not None and abs(figure - value / goal.scale) > (units + 1) / goal.scale:
             raise WrongVerdict(f"search and judge differ on {goal.name}; the design is withheld")
 
 

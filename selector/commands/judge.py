@@ -15,5 +15,5 @@ def run(design: Path, as_json: bool) -> int:
     if as_json:
         print(tables.as_json(tables.judged_data(judgement)))
     else:
-        terminal.print_judgement(judgement, sys.stdout)
+        terminal.print_judgement(judgement, sys.stdout, str(design))
     return 0 if judgement.verdict == "holds" else 1

@@ -41,8 +41,13 @@ def fault(
     return PydanticCustomError("selector", "expected {expected}", fields)
 
 
-def quantity(kind: str, *, above: float | None = None, least: float | None = None) -> Any:
-    """Validator of a quantity: text with a unit, or a float in SI when set from Python."""
+def quantity(
+    kind: str, *, above: float | None = None, least: float | None = None, most: str | None = None
+) -> Any:
+    """Validator of a quantity: text with a unit, or a float in SI when set from Python.
+
+    ``most`` is the largest that makes sense for one field, as text with its unit.
+    """
     called = units.named(kind)
 
     def read(value: Any) -> float:
@@ -61,6 +66,8 @@ def quantity(kind: str, *, above: float | None = None, least: float | None = Non
             raise fault("too-small", f"{called} above {above:g}", "check sign and figure")
         if least is not None and number < least:
             raise fault("too-small", f"{called} of {least:g} or more", "check the sign")
+        if most is not None and number > units.parse(kind, most):
+            raise fault("absurd-size", f"{called} of {most} at most", "check the unit")
         return number
 
     return BeforeValidator(read)
@@ -160,7 +167,8 @@ PowerFromZero = Annotated[float, quantity("power", least=0)]
 Speed = Annotated[float, quantity("speed", least=0)]
 Acceleration = Annotated[float, quantity("acceleration")]
 AccelerationAboveZero = Annotated[float, quantity("acceleration", above=0)]
-Inertia = Annotated[float, quantity("inertia", above=0)]
+RotorInertia = Annotated[float, quantity("inertia", above=0, most="100000 g*cm^2")]
+HoldingTorque = Annotated[float, quantity("torque", above=0, most="100 N*m")]
 InertiaFromZero = Annotated[float, quantity("inertia", least=0)]
 Temperature = Annotated[float, quantity("temperature")]
 Rise = Annotated[float, quantity("temperature_difference", above=0)]

@@ -6,11 +6,12 @@ answer lists every figure so filled.
 
 from __future__ import annotations
 
+import itertools
 import re
 from decimal import Decimal
 from typing import Annotated, Any, Literal
 
-from pydantic import BeforeValidator, Discriminator, Field, Tag, model_validator
+from pydantic import AfterValidator, BeforeValidator, Discriminator, Field, Tag, model_validator
 from pydantic_core import PydanticCustomError
 
 from .fields import (
@@ -20,8 +21,8 @@ from .fields import (
     CountFromZero,
     Current,
     Frequency,
+    HoldingTorque,
     Inductance,
-    Inertia,
     LeadTime,
     Length,
     Mass,
@@ -33,6 +34,7 @@ from .fields import (
     Resistance,
     ResistanceFromZero,
     Rise,
+    RotorInertia,
     Share,
     Size,
     Temperature,
@@ -80,6 +82,22 @@ class DeratingStep(Record):
 
     at: Temperature
     share: Share
+
+    @model_validator(mode="after")
+    def _at_most_all(self) -> DeratingStep:
+        if self.share > 1:
+            raise fault("contradiction", "a share of 100 % at most", at=("share",))
+        return self
+
+
+def _rising(steps: tuple[DeratingStep, ...]) -> tuple[DeratingStep, ...]:
+    temperatures = [step.at for step in steps]
+    if any(b <= a for a, b in itertools.pairwise(temperatures)):
+        raise fault("contradiction", "derating temperatures that rise")
+    return steps
+
+
+Derating = Annotated[tuple[DeratingStep, ...], AfterValidator(_rising)]
 
 
 class Part(Record):
@@ -143,11 +161,11 @@ class Motor(Part):
 
     frame: Length
     step_angle: Angle
-    holding_torque: TorqueAboveZero
+    holding_torque: HoldingTorque
     rated_current: Current
     phase_resistance: Resistance
     phase_inductance: Inductance
-    rotor_inertia: Inertia | None = None
+    rotor_inertia: RotorInertia | None = None
     detent_torque: TorqueFromZero | None = None
     wires: Literal[4, 6, 8] = 4
     joinings: Annotated[tuple[Literal["series", "parallel"], ...], BeforeValidator(listed)] = ()
@@ -244,7 +262,7 @@ class Driver(Part):
     off_time: Time | None = None
     current_loop_bandwidth: Frequency | None = None
     bus_capacitance: Capacitance | None = None
-    derating: tuple[DeratingStep, ...] = ()
+    derating: Derating = ()
     max_ambient: Temperature | None = None
 
     @model_validator(mode="after")
@@ -290,8 +308,9 @@ class Driver(Part):
     @property
     def regulator_time(self) -> float:
         """Dead time of the current regulator. [s]"""
-        if self.off_time is not None and self.off_time <= 20e-6:
-            return REGULATOR_TIME_FAST
+        if self.off_time is not None:
+            fast = self.off_time <= REGULATOR_TIME_FAST
+            return REGULATOR_TIME_FAST if fast else max(REGULATOR_TIME, self.off_time)
         if self.current_loop_bandwidth is not None:
             return max(REGULATOR_TIME, 1.0 / (6.283185307179586 * self.current_loop_bandwidth))
         return REGULATOR_TIME
@@ -313,7 +332,7 @@ class Supply(Part):
     peak_power: Power | None = None
     peak_time: Time | None = None
     efficiency: Share | None = None
-    derating: tuple[DeratingStep, ...] = ()
+    derating: Derating = ()
     max_ambient: Temperature | None = None
     mains: Text | None = None
     inrush: Current | None = None
@@ -339,9 +358,6 @@ class Supply(Part):
             raise fault("contradiction", expected, at=("overvoltage_trip",))
         if self.parallel > 16:
             raise fault("absurd-size", "at most 16 units in parallel", at=("parallel",))
-        temperatures = [step.at for step in self.derating]
-        if temperatures != sorted(temperatures):
-            raise fault("contradiction", "derating temperatures that rise", at=("derating",))
         return self
 
     @property

@@ -135,6 +135,7 @@ class AxisFigures(Record):
     voltage_share: float
     winding_temperature: float
     winding_temperature_high: float
+    winding_limit: float
     case_temperature: float
     peak_power: float
     mean_power: float
@@ -145,6 +146,7 @@ class AxisFigures(Record):
     step_rate: float
     returned_energy: float
     rated_current: float
+    current_basis: str
     start_stop_speed: float | None
     resonance: float | None
     inertia_ratio: float | None
@@ -163,6 +165,7 @@ class BusFigures(Record):
     returned_energy: float
     capacitance: float
     needed_capacitance: float | None
+    absorbs_energy: bool
     rule_of_thumb_current: float
     naive_current: float
 
@@ -206,6 +209,7 @@ class Judgement(Record):
     order: tuple[OrderLine, ...]
     totals: Totals
     currency: str
+    quantity: int
     assumptions: tuple[Remark, ...]
     cautions: tuple[str, ...]
     changed: tuple[str, ...] = ()
@@ -242,6 +246,7 @@ class Rejection(Record):
     count: int
     needs: Quantity | None
     best: Quantity | None
+    margin: float = 0.0
     nearest: str
 
 

@@ -213,13 +213,9 @@ def design_text(answer: Answer, folder: Path, record: dict[str, Any]) -> str:
     def relative(name: str) -> str:
         return Path(os.path.relpath(os.path.realpath(name), folder)).as_posix()
 
-    axes = [
-        {
-            key: f"{value:.12g} A" if key in ("current_peak", "rest_current_peak") else value
-            for key, value in choice.model_dump(exclude_none=True).items()
-        }
-        for choice in answer.design.axes
-    ]
+    assert answer.judgement is not None
+    figures = {axis.axis: axis for axis in answer.judgement.axes}
+    axes = [_axis(choice, figures[choice.axis].current_basis) for choice in answer.design.axes]
     buses = [
         bus.model_dump(exclude_none=True)
         | {"voltage": f"{bus.voltage:.12g} V", "axes": list(bus.axes)}
@@ -233,6 +229,20 @@ def design_text(answer: Answer, folder: Path, record: dict[str, Any]) -> str:
         "record": {"version": answer.version, "inputs": inputs, **record},
     }
     return str(yaml.safe_dump(data, sort_keys=False, allow_unicode=True, width=100))
+
+
+def _axis(choice: AxisChoice, basis: str) -> dict[str, Any]:
+    """One axis as it is written: its setting as the driver's own sheet gives it."""
+    data = choice.model_dump(exclude_none=True)
+    peak = data.pop("current_peak")
+    set_to = {"current_rms": peak / 2**0.5} if basis == "rms" else {"current_peak": peak}
+    written: dict[str, Any] = {}
+    for key, value in data.items():
+        if key == "rest_current_peak":
+            written |= {name: f"{amperes:.9g} A" for name, amperes in set_to.items()}
+            value = f"{value:.9g} A"
+        written[key] = value
+    return written
 
 
 def _is_ours(file: Path) -> bool:

@@ -137,7 +137,10 @@ class _Reader:
     def refuse_emptiness(self, event: Any, mark: Any, found: str) -> None:
         if isinstance(event, yaml.ScalarEvent) and event.value == "" and not event.style:
             found = f"{found} without a value" if found != ":" else "no key before the colon"
-            self.fault(mark, "empty-value", found, "key and value", "fill it in or drop the line")
+            remedy = "fill it in or drop the line"
+            if re.match(r"\d", found):  # the tail of a decimal comma inside { }
+                remedy = "write the decimal sign as a point"
+            self.fault(mark, "empty-value", found, "key and value", remedy)
 
     def refuse_marks_of_reuse(self, event: Any) -> None:
         mark = event.start_mark

@@ -37,6 +37,7 @@ def judge(problem: Problem, design: Design) -> Judgement:
         order=lines,
         totals=totals(bus),
         currency=problem.machine.currency,
+        quantity=problem.machine.quantity,
         assumptions=assumptions(bus),
         cautions=cautions(bus),
     )

@@ -9,7 +9,6 @@ from ..physics import power, thermal, torque
 from .cases import AxisCase
 
 CLOSE = 1e-9  # relative: float dust only
-SAME_SETTING = 0.005  # of a setting: three digits copied from a sheet, RMS or peak
 Findings = Iterator[Finding]
 
 
@@ -103,10 +102,10 @@ def frame(case: AxisCase) -> Findings:
 
 def current_setting(case: AxisCase) -> Findings:
     """The driver has the setting, hot as it is, and the motor bears its peak."""
-    subject, peak = case.axis.axis, case.choice.peak
+    subject, peak = case.axis.axis, case.peak
     settings = case.driver.peak_settings
     nearest = min(settings, key=lambda s: abs(s - peak))
-    on_driver = abs(nearest - peak) <= SAME_SETTING * nearest
+    on_driver = abs(nearest - peak) <= CLOSE * nearest
     yield finding(
         "setting on the driver",
         subject,
@@ -118,9 +117,10 @@ def current_setting(case: AxisCase) -> Findings:
         "stated",
         "" if on_driver else f"the nearest setting of {case.driver.part} is {nearest:.4g} A peak",
     )
-    derated = settings[-1] * _driver_share(case)
+    share = _driver_share(case)
     standing: Standing = "stated" if case.driver.derating else "practice"
-    yield at_most("driver current", subject, peak, derated, "A", standing)
+    note = f"{100 * share:.0f} % of its largest at {case.machine.ambient:g} degC"
+    yield at_most("driver current", subject, peak, settings[-1] * share, "A", standing, note)
     yield at_most(
         "motor peak current",
         subject,
@@ -181,7 +181,7 @@ def rest_share(case: AxisCase) -> Findings:
 
 def holding(case: AxisCase) -> Findings:
     """Torque held at rest against the demand, with the torque margin; detent not counted."""
-    held = float(torque.standstill_torque(case.K, case.rest_current))
+    held = float(torque.standstill_torque(case.K, case.holding_current))
     yield at_least(
         "holding",
         case.axis.axis,
@@ -192,6 +192,16 @@ def holding(case: AxisCase) -> Findings:
         "" if case.holding_needed else "nothing is asked at rest",
         least=case.machine.margins.torque,
     )
+
+
+def stop_torque(case: AxisCase) -> Findings:
+    """The stated emergency stop is one the motor can make, or it loses step in it."""
+    if case.stop_torque is not None:
+        most = float(torque.standstill_torque(case.K, case.peak))
+        note = "inertia times stop_deceleration, and the load where it drives"
+        yield at_least(
+            "stop torque", case.axis.axis, most, case.stop_torque, "N*m", "simulated", note
+        )
 
 
 def held_without_power(case: AxisCase) -> Findings:
@@ -335,6 +345,7 @@ RULES = (
     rest_share,
     rest_current,
     holding,
+    stop_torque,
     held_without_power,
     step_rate,
     winding_temperature,

@@ -70,55 +70,70 @@ def supply_power(bus: BusCase) -> Findings:
 
 def braking_rise(bus: BusCase) -> Findings:
     """Emergency stop of all axes: the highest moment within the drivers' limit and the trip."""
-    energy, held = bus.returned_energy, bus.capacitance
-    unknown = [
-        c.axis.axis
-        for c in bus.axes
-        if c.axis.load_inertia is None or (c.motor.rotor_inertia is None)
-    ]
-    driven = [
-        c.axis.axis
-        for c in bus.axes
-        if c.axis.driving_torque > 0 and c.axis.stop_deceleration is None
-    ]
-    notes = []
-    if bus.absorbs_energy:
-        notes.append("the supply takes energy back")
-    elif energy > 0:
-        notes.append(f"{energy:.3g} J into {held * 1e6:.0f} uF that can be counted on")
-    if unknown:
-        notes.append("inertia not stated: " + ", ".join(unknown))
-    if driven:
-        notes.append("stop_deceleration not stated although the load drives: " + ", ".join(driven))
+    note = _braking_note(bus)
+    open_questions = _braking_unknowns(bus)
     for rule, limit in (("braking rise", bus.voltage_limit), ("overvoltage trip", bus.trip)):
         if limit is None:
+            silent = "overvoltage_trip of the supply not stated"
             yield finding(
-                rule,
-                "bus",
-                bus.risen_voltage,
-                None,
-                "V",
-                None,
-                "unknown",
-                "stated",
-                "overvoltage_trip of the supply not stated",
+                rule, "bus", bus.risen_voltage, None, "V", None, "unknown", "stated", silent
             )
             continue
-        note = "; ".join(notes)
+        said = [note, *open_questions]
         if bus.risen_voltage > limit:
-            note += "; " + _needed(bus, limit)
-        found = at_most(rule, "bus", bus.risen_voltage, limit, "V", "simulated", note)
-        if found.state == "passes" and (unknown or driven):
+            said.append(_needed(bus, limit))
+        text = "; ".join(part for part in said if part)
+        found = at_most(rule, "bus", bus.risen_voltage, limit, "V", "simulated", text)
+        if found.state == "passes" and open_questions:
             found = found.model_copy(update={"state": "unknown"})
         yield found
 
 
+def _braking_note(bus: BusCase) -> str:
+    energy = bus.returned_energy
+    if energy <= 0:
+        return ""
+    if bus.absorbs_energy:
+        return f"{energy:.3g} J go back into the supply"
+    return f"{energy:.3g} J into {bus.capacitance * 1e6:.0f} uF that can be counted on"
+
+
+def _braking_unknowns(bus: BusCase) -> list[str]:
+    """What is not stated and could raise the energy; nothing where none can come or stay."""
+    if bus.absorbs_energy:
+        return []
+    moving = [case for case in bus.axes if case.axis.top_speed > 0]
+    silent = [
+        c.axis.axis for c in moving if c.axis.load_inertia is None or c.motor.rotor_inertia is None
+    ]
+    driven = [
+        c.axis.axis
+        for c in moving
+        if c.axis.driving_torque > 0 and c.axis.stop_deceleration is None
+    ]
+    texts = []
+    if silent:
+        texts.append("inertia not stated: " + ", ".join(silent))
+    if driven:
+        said = "stop_deceleration not stated although the load drives: "
+        texts.append(said + ", ".join(driven))
+    return texts
+
+
 def _needed(bus: BusCase, limit: float) -> str:
+    """What would take up the energy: microfarads, or ohms, joules and watts of a resistor."""
     needed = braking.needed_capacitance(bus.highest, limit, bus.returned_energy)
     if needed is None:
         return "no capacitor helps: the limit lies below the supply's own voltage"
     more = (needed - bus.capacitance) / braking.CAPACITOR_SHARE
-    return f"add bus_capacitance of {more * 1e6:.0f} uF at least"
+    text = f"add bus_capacitance of {more * 1e6:.0f} uF at least"
+    watts = sum(case.stopping_power for case in bus.axes)
+    if watts > 0 and all(case.axis.stop_deceleration is not None for case in bus.axes):
+        text += (
+            f", or a braking resistor of {limit**2 / watts:.3g} ohm at most that takes "
+            f"{watts:.3g} W at first and {bus.returned_energy:.3g} J in all"
+        )
+    return text
 
 
 def startup_capacitance(bus: BusCase) -> Findings:
@@ -153,21 +168,15 @@ def steady_lowering(bus: BusCase) -> Findings:
         return
     consumed = sum(case.driver.idle_power or 0.0 for case in bus.axes)
     over = returned - consumed
-    note = "consumed for sure: the idle power that drivers state"
+    note = f"{returned:.3g} W come back, {consumed:.3g} W of stated idle power surely take some"
     if over > 0:
         limit = min(bus.voltage_limit, bus.trip or bus.voltage_limit)
-        note += f"; a braking resistor of {limit**2 / over:.0f} ohm and {over:.0f} W would take it"
-    yield finding(
-        "steady lowering",
-        "bus",
-        returned,
-        consumed,
-        "W",
-        None,
-        "unknown" if over > 0 else "passes",
-        "derived",
-        note,
-    )
+        note += (
+            f"; the other axes may take the rest, or a braking resistor of {limit**2 / over:.2g} "
+            f"ohm at most for {over:.2g} W at least"
+        )
+    state: State = "unknown" if over > 0 else "passes"
+    yield finding("steady lowering", "bus", returned, consumed, "W", None, state, "derived", note)
 
 
 def stock(bus: BusCase) -> Findings:

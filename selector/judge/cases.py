@@ -21,6 +21,8 @@ from ..domain.results import AxisChoice, Design, joining_of
 from ..physics import braking, power, supply, thermal, torque
 
 SETTLED = 1e-9  # K
+SAME_SETTING = 0.005  # of a setting or share: three digits copied from a sheet
+SAFE_START, START_SHARE = 0.7, 0.8  # of the start-stop speed; voltage share where it holds
 T = TypeVar("T")
 
 
@@ -66,6 +68,13 @@ class AxisCase:
             return torque.Joined(*rated)
         return torque.joined(self.joining, m.rated_as, *rated)
 
+    @cached_property
+    def peak(self) -> float:
+        """The setting: the driver's own where the design's figure is that one rounded. [A]"""
+        nearest = min(self.driver.peak_settings, key=lambda s: abs(s - self.choice.peak))
+        close = abs(nearest - self.choice.peak) <= SAME_SETTING * nearest
+        return nearest if close else self.choice.peak
+
     @property
     def K(self) -> float:
         """Torque constant. [N·m/A]"""
@@ -108,19 +117,26 @@ class AxisCase:
     def rest_share(self) -> float:
         """Share of the setting at rest: as the design says, else the smallest that holds."""
         if self.choice.rest_current_peak is not None:
-            return self.choice.rest_current_peak / self.choice.peak
+            asked = self.choice.rest_current_peak / self.peak
+            nearest = min(self.driver.hold_shares, key=lambda share: abs(share - asked))
+            return nearest if abs(nearest - asked) <= SAME_SETTING * nearest else asked
         if not self.axis.reduce_at_rest:
             return 1.0
         need = self.holding_needed * (1.0 + self.machine.margins.torque)
         for share in self.driver.hold_shares:
-            if torque.standstill_torque(self.K, share * self.choice.peak) >= need:
+            if torque.standstill_torque(self.K, share * self.peak) >= need:
                 return share
         return 1.0
 
     @property
     def rest_current(self) -> float:
         """[A]"""
-        return self.rest_share * self.choice.peak
+        return self.rest_share * self.peak
+
+    @property
+    def holding_current(self) -> float:
+        """Current that flows at rest with the supply at its low end and the winding warm. [A]"""
+        return min(self.rest_current, self.voltage * (1.0 - self.spread) / self.resistance)
 
     @property
     def step_limit(self) -> float | None:
@@ -142,6 +158,30 @@ class AxisCase:
         """At top speed. [Hz]"""
         return float(torque.step_rate(self.axis.top_speed, self.N, microsteps))
 
+    def step_rate_at(self, speed: float) -> float:
+        """Full steps. [Hz]"""
+        return float(torque.step_rate(speed, self.N, 1))
+
+    @property
+    def resonance(self) -> float | None:
+        """The motor's own frequency with its load; None where an inertia is unknown. [Hz]"""
+        if self.motor.rotor_inertia is None or self.axis.load_inertia is None:
+            return None
+        return float(torque.natural_frequency(self.K, self.peak, self.inertia, self.N))
+
+    @property
+    def safe_start(self) -> float | None:
+        """Speed it may jump to without a ramp; None where unknown or short of voltage. [rad/s]"""
+        if self.resonance is None:
+            return None
+        load = max(abs(p.torque) for p in self.axis.points)
+        edge = torque.start_stop_speed(self.K, self.peak, self.inertia, self.N, load)
+        speed = SAFE_START * float(edge)
+        share = torque.voltage_share(
+            speed, self.voltage, self.peak, self.resistance, self.joined.inductance, self.K, self.N
+        )
+        return speed if share < START_SHARE else None
+
     # -- heat -------------------------------------------------------------------------------
 
     @property
@@ -149,6 +189,14 @@ class AxisCase:
         """Highest winding temperature the insulation allows, less the margin. [°C]"""
         limit = thermal.INSULATION_LIMITS[self.motor.insulation_class or "B"]
         return limit - self.machine.margins.winding
+
+    @property
+    def winding_limit(self) -> float:
+        """The same, or what a stated limit of the case allows if that is less. [°C]"""
+        if self.motor.case_limit is None:
+            return self.heat_limit
+        room = self.motor.case_limit - self.machine.ambient
+        return min(self.heat_limit, self.machine.ambient + room / thermal.CASE_SHARE)
 
     def steady_temperature(self, iron: float) -> float:
         """Winding temperature: of the duty, else the worst of each point and rest. [°C]"""
@@ -164,7 +212,7 @@ class AxisCase:
             thermal.thermal_resistance(rise, self.joined.rated_current, self.joined.resistance)
         )
         temperature = self.machine.ambient
-        for _ in range(200):
+        for step in range(200):
             before = temperature
             copper, core = self._losses(scene, temperature, iron)
             temperature = float(
@@ -172,6 +220,8 @@ class AxisCase:
             )
             if abs(temperature - before) < SETTLED:
                 break
+            if step >= thermal.PLAIN_STEPS:  # two states take turns: close in on the middle
+                temperature = (temperature + before) / 2.0
         return temperature
 
     def _losses(
@@ -190,7 +240,7 @@ class AxisCase:
                 point.speed,
                 self.shaft_torque(point),
                 self.voltage,
-                self.choice.peak,
+                self.peak,
                 R,
                 J.inductance,
                 self.K,
@@ -223,7 +273,7 @@ class AxisCase:
 
     def speeds(self, point: Point) -> list[float]:
         """Speeds the point is judged at."""
-        I, R, L = self.choice.peak, self.resistance, self.joined.inductance
+        I, R, L = self.peak, self.resistance, self.joined.inductance
         corner = float(torque.corner_speed(self.voltage, 0.0, I, R, L, self.K, self.N))
         return [float(s) for s in torque.judged_speeds(point.speed, point.from_rest, corner)]
 
@@ -243,7 +293,7 @@ class AxisCase:
         return torque.torque_chain(
             speed,
             self.voltage,
-            self.choice.peak,
+            self.peak,
             self.motor_resistance,
             self.driver.bridge_resistance,
             self.joined.inductance,
@@ -275,7 +325,7 @@ class AxisCase:
                 speed,
                 self.shaft_torque(point),
                 self.voltage,
-                self.choice.peak,
+                self.peak,
                 self.resistance,
                 J.inductance,
                 self.K,
@@ -305,7 +355,7 @@ class AxisCase:
                         p.from_rest,
                         self.shaft_torque(p),
                         self.voltage,
-                        self.choice.peak,
+                        self.peak,
                         self.resistance,
                         J.inductance,
                         self.K,
@@ -329,7 +379,7 @@ class AxisCase:
     @property
     def worst_power(self) -> float:
         """What a jammed or overloaded axis could draw: a note, no rule. [W]"""
-        J, I, highest = self.joined, self.choice.peak, self.voltage * (1.0 + self.spread)
+        J, I, highest = self.joined, self.peak, self.voltage * (1.0 + self.spread)
         found = [self.rest_power]
         for j in self.judged:
             pullout = torque.pullout_torque(
@@ -365,30 +415,46 @@ class AxisCase:
 
     @property
     def cold_resistance(self) -> float:
-        """Winding at 25 °C with bridge. [ohm]"""
-        return self.joined.resistance + self.driver.bridge_resistance
+        """Winding at 25 °C, or the ambient if that is colder, with bridge. [ohm]"""
+        coldest = min(25.0, self.machine.ambient)
+        winding = float(torque.winding_resistance(self.joined.resistance, coldest))
+        return winding + self.driver.bridge_resistance
+
+    @property
+    def stop_torque(self) -> float | None:
+        """Torque the stated emergency stop asks for; None if its steepness is not stated. [N·m]"""
+        slow = self.axis.stop_deceleration
+        return None if slow is None else self.inertia * slow + self.axis.driving_torque
 
     @property
     def returned_energy(self) -> float:
         """Of an emergency stop from top speed. [J]"""
-        top, slow = self.axis.top_speed, self.axis.stop_deceleration
-        if slow is None:
+        top, slow, brake = self.axis.top_speed, self.axis.stop_deceleration, self.stop_torque
+        if slow is None or brake is None:
             return float(braking.kinetic_energy(self.inertia, top))
-        brake = self.inertia * slow + self.axis.driving_torque
         return float(braking.returned_energy(top, brake, slow, self.cold_resistance, self.K))
 
     @property
     def lowering_power(self) -> float:
-        """Largest power a steadily driven point returns. [W]"""
-        driven = [p for p in self.axis.points if p.torque < 0 and p.speed > 0]
-        return max(
-            [
-                0.0,
-                *(
-                    float(braking.lowering_power(p.speed, -p.torque, self.cold_resistance, self.K))
-                    for p in driven
-                ),
-            ]
+        """Largest power a steadily driven point returns. [W]
+
+        A vertical axis without such a point is taken to come down at its top speed.
+        """
+        driven = [(p.speed, -p.torque) for p in self.axis.points if p.torque < 0]
+        if self.axis.vertical and not driven:
+            driven = [(self.axis.top_speed, self.axis.driving_torque)]
+        returned = (
+            braking.lowering_power(speed, load, self.cold_resistance, self.K)
+            for speed, load in driven
+        )
+        return max((float(power) for power in returned), default=0.0)
+
+    @property
+    def stopping_power(self) -> float:
+        """Power the stated emergency stop returns at its start. [W]"""
+        brake = self.stop_torque or 0.0
+        return float(
+            braking.lowering_power(self.axis.top_speed, brake, self.cold_resistance, self.K)
         )
 
 

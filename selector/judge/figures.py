@@ -2,12 +2,19 @@
 
 from __future__ import annotations
 
-from ..domain.results import AxisFigures, BusFigures, ChainStep, OrderLine, Totals, WorstPoint
-from ..physics import braking, power, supply, thermal, torque
+from ..domain.results import (
+    AxisFigures,
+    BusFigures,
+    ChainStep,
+    OrderLine,
+    Standing,
+    Totals,
+    WorstPoint,
+)
+from ..physics import braking, power, supply, thermal
 from .cases import AxisCase, BusCase
 
-SAFE_START = 0.7  # of the start-stop speed; simulated
-START_SHARE = 0.8  # voltage share below which it holds
+MOST_SIMULATED_DAMPING = 0.10
 
 
 def axis_figures(case: AxisCase) -> AxisFigures:
@@ -37,13 +44,18 @@ def axis_figures(case: AxisCase) -> AxisFigures:
             ChainStep(
                 step="damping",
                 torque=float(chain.less_detent * chain.damping),
-                standing="simulated" if case.axis.damping_ratio is not None else "guess",
+                standing=_damping_standing(case),
             ),
-            ChainStep(step="microsteps", torque=float(chain.usable), standing="guess"),
+            ChainStep(
+                step="microsteps",
+                torque=float(chain.usable),
+                standing="guess" if case.microsteps < 8 else "simulated",
+            ),
         ),
         voltage_share=float(chain.voltage_share),
         winding_temperature=case.temperature,
         winding_temperature_high=high,
+        winding_limit=case.winding_limit,
         case_temperature=float(thermal.case_temperature(case.machine.ambient, case.temperature)),
         peak_power=case.peak_power,
         mean_power=case.mean_power,
@@ -54,36 +66,16 @@ def axis_figures(case: AxisCase) -> AxisFigures:
         step_rate=case.step_rate(case.microsteps),
         returned_energy=case.returned_energy,
         rated_current=case.joined.rated_current,
-        start_stop_speed=_start_stop(case),
-        resonance=_resonance(case),
+        current_basis=case.driver.current_basis,
+        start_stop_speed=case.safe_start,
+        resonance=case.resonance,
         inertia_ratio=_inertia_ratio(case),
     )
 
 
-def _resonance(case: AxisCase) -> float | None:
-    if case.motor.rotor_inertia is None or case.axis.load_inertia is None:
-        return None
-    return float(torque.natural_frequency(case.K, case.choice.peak, case.inertia, case.N))
-
-
-def _start_stop(case: AxisCase) -> float | None:
-    """Speed the axis may jump to without a ramp; None where inertia is unknown."""
-    if _resonance(case) is None:
-        return None
-    load = max(abs(p.torque) for p in case.axis.points)
-    speed = SAFE_START * float(
-        torque.start_stop_speed(case.K, case.choice.peak, case.inertia, case.N, load)
-    )
-    share = torque.voltage_share(
-        speed,
-        case.voltage,
-        case.choice.peak,
-        case.resistance,
-        case.joined.inductance,
-        case.K,
-        case.N,
-    )
-    return speed if share < START_SHARE else None
+def _damping_standing(case: AxisCase) -> Standing:
+    stated = case.axis.damping_ratio
+    return "guess" if stated is None or stated > MOST_SIMULATED_DAMPING else "simulated"
 
 
 def _inertia_ratio(case: AxisCase) -> float | None:
@@ -110,6 +102,7 @@ def bus_figures(bus: BusCase) -> BusFigures:
         returned_energy=bus.returned_energy,
         capacitance=bus.capacitance,
         needed_capacitance=braking.needed_capacitance(bus.highest, limit, bus.returned_energy),
+        absorbs_energy=bus.absorbs_energy,
         rule_of_thumb_current=supply.rule_of_thumb_current(bus.voltage, rated),
         naive_current=supply.naive_current(rated),
     )

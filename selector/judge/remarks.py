@@ -10,6 +10,7 @@ from ..physics import power, thermal
 from .cases import AxisCase, BusCase
 
 STRONG_CHAIN, COARSE_RIPPLE, HEAVY_LOAD, HOT_CASE = 3.0, 0.3, 10.0, 60.0
+NEAR_RESONANCE = 0.15  # of the natural frequency
 TOUCH_VOLTAGE = 60.0  # V DC
 
 
@@ -32,23 +33,36 @@ def _names(cases: Iterable[AxisCase], part: str) -> str:
 
 def _of_the_machine(bus: BusCase) -> Iterator[tuple[str, str]]:
     machine = bus.machine
-    t = machine.tolerances
+
+    def said(record: object, *names: str) -> str:
+        """Standing of figures that the machine file states or leaves to us."""
+        stated: set[str] = getattr(record, "model_fields_set", set())
+        return "stated" if all(name in stated for name in names) else "practice"
+
+    yield (
+        f"Ambient {machine.ambient:g} degC around motors, drivers and supply.",
+        said(machine, "ambient"),
+    )
+    m, t = machine.margins, machine.tolerances
+    yield (
+        f"Margins: torque {100 * m.torque:g} %, supply {100 * m.supply:g} %, bus at most "
+        f"{100 * m.voltage_use:g} % of a driver's limit, winding {m.winding:g} K below its class.",
+        said(m, "torque", "supply", "voltage_use", "winding"),
+    )
     how = {
         "combined": "taken together by root sum of squares",
         "worst": "all at their worst end",
         "nominal": "not counted",
     }[t.combine]
     yield (
-        f"Ambient {machine.ambient:g} degC around motors, drivers and supply.",
-        "stated" if "ambient" in machine.model_fields_set else "practice",
-    )
-    yield (
-        f"Tolerances: resistance ±{100 * t.resistance:g} %, inductance ±{100 * t.inductance:g} "
-        f"%, torque ±{100 * t.torque:g} %, supply ±{100 * bus.spread:g} %; {how}.",
-        "practice",
+        f"Tolerances: resistance ±{100 * t.resistance:g} %, inductance ±{100 * t.inductance:g} %, "
+        f"torque ±{100 * t.torque:g} %, supply ±{100 * bus.spread:g} %; {how}.",
+        said(t, "resistance", "inductance", "torque"),
     )
     if len(bus.axes) > 1:
         yield "All axes work at once, each at its largest power (no cycle is stated).", "practice"
+    yield "Capacitors count with 80 % of their stated capacitance when braking.", "practice"
+    yield "In the emergency stop no friction helps.", "derived"
     yield "Voltage drop in cables 0 V.", "guess"
     yield (
         f"Iron loss {power.IRON_LOSS_HIGH:g} W/(N*m*Hz) for the supply and "
@@ -58,28 +72,33 @@ def _of_the_machine(bus: BusCase) -> Iterator[tuple[str, str]]:
     )
     yield "Driver loss 3 % of bus voltage times phase current, beside its bridge.", "guess"
     yield "Case temperature: three quarters of the winding's rise.", "guess"
-    no_duty = [case.axis.axis for case in bus.axes if not case.axis.has_duty]
-    if no_duty:
-        yield (
-            "No duty stated, so each point counts as lasting for ever: " + ", ".join(no_duty) + ".",
-            "practice",
-        )
+    yield from _of_the_axes(bus)
+
+
+def _of_the_axes(bus: BusCase) -> Iterator[tuple[str, str]]:
+    def names(cases: Iterable[AxisCase]) -> str:
+        return ", ".join(case.axis.axis for case in cases)
+
+    lasting = [case for case in bus.axes if not case.axis.has_duty]
+    averaged = [case for case in bus.axes if case.axis.has_duty]
     guessed = [case for case in bus.axes if case.axis.damping_ratio is None]
     active = [case for case in guessed if case.driver.active_damping]
     passive = [case for case in guessed if not case.driver.active_damping]
-    for cases, ratio, kind in (
-        (active, defaults.DAMPING_ACTIVE, "with active damping"),
-        (passive, defaults.DAMPING_PASSIVE, "without"),
-    ):
+    coarse = [case for case in bus.axes if case.microsteps < 8]
+    plated = [case for case in bus.axes if case.axis.mounting_factor == 1.0]
+    for cases, text, standing in (
+        (lasting, "No duty stated, so each point counts as lasting for ever", "practice"),
+        (averaged, "Shares of time repeat within a few minutes, short against the 20 to 40 min a "
+                   "motor takes to heat", "practice"),
+        (active, f"Damping ratio {100 * defaults.DAMPING_ACTIVE:g} % of drivers with active "
+                 "damping", "guess"),
+        (passive, f"Damping ratio {100 * defaults.DAMPING_PASSIVE:g} % of drivers without",
+         "guess"),
+        (coarse, "Torque lost with steps coarser than 1/8", "guess"),
+        (plated, "Motors sit on a metal plate as their rating supposes", "practice"),
+    ):  # fmt: skip
         if cases:
-            names = ", ".join(case.axis.axis for case in cases)
-            yield f"Damping ratio {100 * ratio:g} % of drivers {kind}: {names}.", "guess"
-    mounted = [case.axis.axis for case in bus.axes if case.axis.mounting_factor == 1.0]
-    if mounted:
-        yield (
-            "Motors sit on a metal plate as their rating supposes: " + ", ".join(mounted) + ".",
-            ("practice"),
-        )
+            yield f"{text}: {names(cases)}.", standing
 
 
 def _of_the_motors(bus: BusCase) -> Iterator[tuple[str, str]]:
@@ -118,17 +137,18 @@ def _of_the_drivers(bus: BusCase) -> Iterator[tuple[str, str]]:
             "guess",
         ),
         (
-            [
-                c
-                for c in bus.axes
-                if c.driver.off_time is None and c.driver.current_loop_bandwidth is None
-            ],
+            [c for c in bus.axes if c.driver.regulator_time == defaults.REGULATOR_TIME],
             f"Regulator time {1e6 * defaults.REGULATOR_TIME:g} us",
             "guess",
         ),
         (
             [c for c in bus.axes if c.driver.bus_capacitance is None],
             "Bus capacitance 0 uF when braking, as none is stated",
+            "guess",
+        ),
+        (
+            [c for c in bus.axes if c.driver.regulator_time > defaults.REGULATOR_TIME],
+            "Regulator time as long as its off time or loop",
             "guess",
         ),
         (
@@ -169,60 +189,114 @@ def cautions(bus: BusCase) -> tuple[str, ...]:
 
 
 def _about_axes(bus: BusCase) -> Iterator[str]:
-    """What a rule does not forbid but the user should know, one line for all axes it is true of."""
-    lossy: list[str] = []
-    hot, rough, heavy, strong, fast = (list[str]() for _ in range(5))
-    for case in bus.axes:
-        name, worst = case.axis.axis, case.worst
-        allowed = float(worst.chain.usable) / (1.0 + bus.machine.margins.torque)
-        if allowed > 0 and float(worst.chain.nominal) / allowed > STRONG_CHAIN:
-            strong.append(f"{name} {float(worst.chain.nominal) / allowed:.1f}")
-        high = case.steady_temperature(power.IRON_LOSS_HIGH)
-        if high > case.heat_limit >= case.temperature:
-            shown = "no end" if high >= thermal.RUNAWAY else f"{high:.0f} degC"
-            lossy.append(f"{name} {shown} (limit {case.heat_limit:.0f})")
-        case_heat = float(thermal.case_temperature(case.machine.ambient, case.temperature))
-        if case_heat > HOT_CASE:
-            hot.append(f"{name} {case_heat:.0f} degC")
-        if case.voltage * 20e-6 / (case.joined.inductance * case.choice.peak) > COARSE_RIPPLE:
-            rough.append(name)
-        rotor, load = case.motor.rotor_inertia, case.axis.load_inertia
-        if rotor and load is not None and load / rotor > HEAVY_LOAD:
-            heavy.append(f"{name} {load / rotor:.0f}")
-        if case.K * case.axis.top_speed > case.voltage:
-            fast.append(f"{name} {case.K * case.axis.top_speed:.0f} V")
-    for found, text in (
-        (
-            lossy,
-            "The winding could get too hot if the iron is as lossy as its band allows; measure "
-            "it: {}.",
-        ),
-        (hot, "Motor cases get hot, guard against touch: {}."),
-        (
-            heavy,
-            "Load inertia over rotor inertia is above 10; expect ringing and lost steps in "
-            "sharp moves: {}.",
-        ),
-        (
-            strong,
-            "Ideal torque is more than 3 times what is allowed; a measured torque curve would "
-            "free some of it: {}.",
-        ),
-        (
-            rough,
-            "Current ripple is large for these windings; torque is safe, the power figure is "
-            "not: {}.",
-        ),
-        (fast, "Turned at top speed with its driver off a motor feeds the bus: {}."),
-    ):
-        if found:
-            yield text.format(", ".join(found))
-    vertical = [case.axis.axis for case in bus.axes if case.axis.vertical]
-    if vertical:
-        yield (
-            "Falls when power goes, unless a brake, a counterweight or a screw that does not "
-            f"run back holds it; keep clear: {', '.join(vertical)}."
-        )
+    """What a rule does not forbid but the user should know: one line for all axes it is true of."""
+    for about, text in (
+        (_lossy, "The winding could get too hot if the iron is as lossy as its band allows; "
+                 "measure it: {}."),
+        (_hot, "Motor cases get hot, guard against touch: {}."),
+        (_steep, "No acceleration is stated, and without a ramp these axes start only up to: {}."),
+        (_heavy, "Load inertia over rotor inertia is above 10; expect ringing and lost steps in "
+                 "sharp moves: {}."),
+        (_resonant, "Steady running near the motor's own resonance, rough at low damping: {}."),
+        (_strong, "Ideal torque is more than 3 times what the margin leaves of the usable; a "
+                  "measured torque curve would free some of it: {}."),
+        (_rough, "Current ripple is large for these windings; torque is safe, the power figure is "
+                 "not: {}."),
+        (_one_phase, "At rest one phase may carry more than the rated current alone, and gets "
+                     "hotter than the figure says: {}."),
+        (_coarse, "Steps coarser than 1/8 are rough and cost torque: {}."),
+        (_fast, "Turned at top speed with its driver off a motor feeds the bus: {}."),
+        (_light, "The load drives with more than the holding torque asked at rest: {}."),
+        (_falling, "Falls or runs on when power goes, unless a brake, a counterweight or a screw "
+                   "that does not run back holds it; keep clear: {}."),
+        (_held, "Held without power as stated or by the motor's brake; test it before you rely on "
+                "it: {}."),
+    ):  # fmt: skip
+        found = [about(case) for case in bus.axes]
+        if any(found):
+            yield text.format(", ".join(filter(None, found)))
+
+
+def _lossy(case: AxisCase) -> str:
+    high = case.steady_temperature(power.IRON_LOSS_HIGH)
+    if not high > case.winding_limit >= case.temperature:
+        return ""
+    shown = "no end" if high >= thermal.RUNAWAY else f"{high:.0f} degC"
+    return f"{case.axis.axis} {shown} (limit {case.winding_limit:.0f})"
+
+
+def _hot(case: AxisCase) -> str:
+    heat = float(thermal.case_temperature(case.machine.ambient, case.temperature))
+    return f"{case.axis.axis} {heat:.0f} degC" if heat > HOT_CASE else ""
+
+
+def _steep(case: AxisCase) -> str:
+    speed = case.safe_start
+    starts = any(p.from_rest and p.speed > (speed or 0.0) for p in case.axis.points)
+    if speed is None or case.axis.accelerates or not starts:
+        return ""
+    return f"{case.axis.axis} {speed * 30 / 3.141592653589793:.3g} rpm"
+
+
+def _heavy(case: AxisCase) -> str:
+    rotor, load = case.motor.rotor_inertia, case.axis.load_inertia
+    if not rotor or load is None or load / rotor <= HEAVY_LOAD:
+        return ""
+    return f"{case.axis.axis} {load / rotor:.0f}"
+
+
+def _resonant(case: AxisCase) -> str:
+    own = case.resonance
+    if own is None:
+        return ""
+    for point in case.axis.points:
+        rate = case.step_rate_at(point.speed)
+        if point.acceleration == 0.0 and abs(rate / own - 1.0) < NEAR_RESONANCE:
+            return f"{case.axis.axis} {rate:.0f} full steps/s by {own:.0f} Hz"
+    return ""
+
+
+def _strong(case: AxisCase) -> str:
+    chain = case.worst.chain
+    allowed = float(chain.usable) / (1.0 + case.machine.margins.torque)
+    if allowed <= 0 or float(chain.nominal) / allowed <= STRONG_CHAIN:
+        return ""
+    return f"{case.axis.axis} {float(chain.nominal) / allowed:.1f}"
+
+
+def _rough(case: AxisCase) -> str:
+    ripple = case.voltage * 20e-6 / (case.joined.inductance * case.peak)
+    return case.axis.axis if ripple > COARSE_RIPPLE else ""
+
+
+def _one_phase(case: AxisCase) -> str:
+    return case.axis.axis if case.rest_current > case.joined.rated_current * 1.001 else ""
+
+
+def _coarse(case: AxisCase) -> str:
+    return f"{case.axis.axis} 1/{case.microsteps}" if case.microsteps < 8 else ""
+
+
+def _fast(case: AxisCase) -> str:
+    volts = case.K * case.axis.top_speed
+    return f"{case.axis.axis} {volts:.0f} V" if volts > case.voltage else ""
+
+
+def _light(case: AxisCase) -> str:
+    asked, drives = case.holding_needed, case.axis.driving_torque
+    if drives <= asked:
+        return ""
+    return f"{case.axis.axis} {drives:.3g} N*m against {asked:.3g}"
+
+
+def _falling(case: AxisCase) -> str:
+    held = case.axis.held_without_power or case.motor.brake is not None
+    return case.axis.axis if case.axis.driving_torque > 0 and not held else ""
+
+
+def _held(case: AxisCase) -> str:
+    held = case.axis.held_without_power or case.motor.brake is not None
+    return case.axis.axis if case.axis.driving_torque > 0 and held else ""
 
 
 def _about_the_machine(bus: BusCase) -> Iterator[str]:

@@ -10,6 +10,7 @@ from .torque import COPPER_PER_KELVIN, winding_resistance
 
 INSULATION_LIMITS = {"A": 105.0, "E": 120.0, "B": 130.0, "F": 155.0, "H": 180.0}  # IEC 60085, °C
 CASE_SHARE = 0.75  # of the winding's rise that the case shows: guess
+PLAIN_STEPS = 12  # of an iteration to a steady state before it is damped
 RUNAWAY = 1000.0  # °C; stands for "no steady temperature"
 
 Numbers = Any

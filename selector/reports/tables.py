@@ -11,6 +11,7 @@ from ..domain.results import Answer, AxisChoice, AxisFigures, BusFigures, Judgem
 AXIS_UNITS = {
     "winding_temperature": "degC",
     "winding_temperature_high": "degC",
+    "winding_limit": "degC",
     "case_temperature": "degC",
     "peak_power": "W",
     "mean_power": "W",
@@ -151,6 +152,7 @@ def _axis(choice: AxisChoice, figures: AxisFigures) -> dict[str, Any]:
         "axis": choice.axis,
         "motor": choice.motor,
         "joining": choice.joining,
+        "current_basis": figures.current_basis,
         "reduction": choice.reduction,
         "driver": choice.driver,
         "current_peak": quantity(choice.peak, "A"),

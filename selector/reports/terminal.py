@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import os
 from collections.abc import Iterable, Sequence
 from typing import TextIO
@@ -29,45 +30,63 @@ class _Console(Console):
         raise BrokenPipeError
 
 
-def console(stream: TextIO) -> Console:
-    """A console of the report's width; colour only on a terminal that wants it."""
-    plain = not stream.isatty() or "NO_COLOR" in os.environ
-    width = WIDTH if not stream.isatty() else min(WIDTH, Console(file=stream).width)
-    return _Console(
-        file=stream,
-        width=width,
-        no_color=plain,
-        highlight=False,
-        soft_wrap=False,
-        force_terminal=None if not plain else False,
-    )
+class _Page:
+    """Lines of text gathered at the report's width and written without trailing blanks.
+
+    Always 100 columns: a narrower terminal wraps lines, which beats breaking figures in two.
+    """
+
+    def __init__(self, stream: TextIO) -> None:
+        self.stream, self.text = stream, io.StringIO()
+        colour = stream.isatty() and "NO_COLOR" not in os.environ
+        self.console = Console(
+            file=self.text, width=WIDTH, highlight=False, force_terminal=colour, no_color=not colour
+        )
+        self.print = self.console.print
+
+    def finish(self) -> None:
+        """Write it all."""
+        lines = self.text.getvalue().splitlines()
+        self.stream.write("\n".join(line.rstrip() for line in lines) + "\n")
 
 
 # -- pieces -----------------------------------------------------------------------------------
 
 
-def _head(out: Console, text: str) -> None:
+def _head(out: _Page, text: str) -> None:
     out.print()
-    out.print(Text(text.upper(), style="bold"))
+    out.print(Text(text, style="bold"))
 
 
-def _table(columns: Sequence[str], rows: Iterable[Sequence[str]], left: int = 1) -> Padding:
-    """Columns of text; the first ``left`` flush left, the others right."""
+def _table(
+    columns: Sequence[str], rows: Iterable[Sequence[str]], left: int = 1, folds: Sequence[int] = ()
+) -> Padding:
+    """Columns of text; the first ``left`` flush left, the others right; only ``folds`` may wrap."""
     table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="dim")
     for number, name in enumerate(columns):
-        table.add_column(name, justify="left" if number < left else "right", overflow="fold")
+        table.add_column(
+            name,
+            justify="left" if number < left or number in folds else "right",
+            overflow="fold",
+            no_wrap=number not in folds,
+        )
     for row in rows:
         table.add_row(*(Text(cell) for cell in row))
     return Padding(table, (0, 0, 0, 2))
 
 
-def _lines(out: Console, rows: Iterable[str]) -> None:
+def _hang(out: _Page, first: str, text: str, style: str = "") -> None:
+    """A word in a narrow column, and text beside it that wraps under itself."""
+    table = Table.grid(padding=(0, 1, 0, 0))
+    table.add_column(width=len(first) + 2, justify="right", no_wrap=True)
+    table.add_column(overflow="fold")
+    table.add_row(Text(first, style=style), Text(text, style=style))
+    out.print(table)
+
+
+def _lines(out: _Page, rows: Iterable[str]) -> None:
     for row in rows:
-        table = Table.grid(padding=(0, 1, 0, 0))
-        table.add_column(width=2, justify="right")
-        table.add_column(overflow="fold")
-        table.add_row("-", Text(row))
-        out.print(table)
+        _hang(out, "-", row)
 
 
 def percent(share: float | None, digits: int = 0) -> str:
@@ -75,7 +94,7 @@ def percent(share: float | None, digits: int = 0) -> str:
     return "-" if share is None else f"{100 * share:.{digits}f} %"
 
 
-def figure(quantity: Quantity | None) -> str:
+def figure(quantity: Quantity | None, digits: int = 4) -> str:
     """A quantity in the unit people read it in."""
     if quantity is None:
         return "-"
@@ -91,7 +110,7 @@ def figure(quantity: Quantity | None) -> str:
     if unit == "Hz" and value >= 1e4:
         return f"{value / 1e3:.4g} kHz"
     name, factor = shown.get(unit, (unit, 1.0))
-    return f"{value * factor:.4g} {name}".strip()
+    return f"{value * factor:.{digits}g} {name}".strip()
 
 
 def heated(temperature: float) -> str:
@@ -133,22 +152,26 @@ def visible(text: str) -> str:
 
 def print_answer(answer: Answer, stream: TextIO) -> None:
     """What ``pick`` found."""
-    out = console(stream)
+    out = _Page(stream)
     if answer.judgement is None:
         _print_none(answer, out)
+        out.finish()
         return
     goals = ", ".join(_goal(g.name, g.value, g.unit) for g in answer.goals)
     out.print(Text(f"{answer.machine}: {answer.verdict}, {goals}", style="bold"))
     _print_judgement(answer.judgement, out, answer)
+    out.finish()
 
 
-def print_judgement(judgement: Judgement, stream: TextIO) -> None:
-    """What ``judge`` found."""
-    out = console(stream)
-    out.print(Text(f"{judgement.design.machine}: the design {judgement.verdict}", style="bold"))
+def print_judgement(judgement: Judgement, stream: TextIO, name: str = "the design") -> None:
+    """What ``judge`` found of the design of that name."""
+    out = _Page(stream)
+    machine = judgement.design.machine
+    out.print(Text(f"{name} for {machine}: the design {judgement.verdict}", style="bold"))
     for name in judgement.changed:
         out.print(Text(f"  changed since the design was saved: {name}"))
     _print_judgement(judgement, out, None)
+    out.finish()
 
 
 def _goal(name: str, value: float, unit: str) -> str:
@@ -157,7 +180,7 @@ def _goal(name: str, value: float, unit: str) -> str:
     return f"{name} {value:.4g} kg" if unit == "kg" else f"{name} {money(value, unit)}"
 
 
-def _print_judgement(judgement: Judgement, out: Console, answer: Answer | None) -> None:
+def _print_judgement(judgement: Judgement, out: _Page, answer: Answer | None) -> None:
     _print_states(judgement, out)
     _print_design(judgement, out)
     _print_headrooms(judgement, out)
@@ -169,31 +192,37 @@ def _print_judgement(judgement: Judgement, out: Console, answer: Answer | None) 
     _print_order(judgement, out)
     if answer is not None:
         _print_proof(answer, out)
-    _head(out, "assumptions and guesses")
+    _head(out, "ASSUMPTIONS AND GUESSES")
     _lines(out, (f"{remark.standing}: {remark.text}" for remark in judgement.assumptions))
-    _head(out, "cautions")
+    _head(out, "CAUTIONS")
     _lines(out, judgement.cautions)
 
 
-def _print_states(judgement: Judgement, out: Console) -> None:
-    """Rules that fail, then what is unknown, grouped, with what would settle it."""
+def _print_states(judgement: Judgement, out: _Page) -> None:
+    """Rules that fail, then what is unknown, grouped, then what only a guess lets pass."""
     states = [finding.state for finding in judgement.findings]
-    counts = {state: states.count(state) for state in ("passes", "fails", "unknown")}
-    out.print(
-        Text(
-            f"  {len(states)} findings: {counts['passes']} pass, {counts['fails']} fail, "
-            f"{counts['unknown']} unknown"
-        )
-    )
+    passing, failing, unknown = (states.count(s) for s in ("passes", "fails", "unknown"))
+    out.print(Text(f"  {len(states)} findings: {passing} pass, {failing} fail, {unknown} unknown"))
     for finding in judgement.findings:
         if finding.state == "fails":
-            out.print(Text(f"  FAILS    {_finding(finding)}", style="bold"))
+            _hang(out, "FAILS  ", _finding(finding), "bold")
     groups: dict[tuple[str, str], list[str]] = {}
     for finding in judgement.findings:
         if finding.state == "unknown":
             groups.setdefault((finding.rule, finding.note), []).append(finding.subject)
     for (rule, note), subjects in groups.items():
-        out.print(Text(f"  unknown  {rule} ({', '.join(dict.fromkeys(subjects))}): {note}"))
+        _hang(out, "unknown", f"{rule} ({', '.join(dict.fromkeys(subjects))}): {note}")
+    for figures in judgement.axes:
+        if figures.winding_temperature_high > figures.winding_limit >= figures.winding_temperature:
+            _hang(
+                out,
+                "measure",
+                (
+                    f"winding of {figures.axis}: {heated(figures.winding_temperature)} degC, but up to "
+                    f"{heated(figures.winding_temperature_high)} degC if its iron is lossy; limit "
+                    f"{figures.winding_limit:.0f} degC"
+                ),
+            )
 
 
 def _finding(finding: Finding) -> str:
@@ -201,7 +230,7 @@ def _finding(finding: Finding) -> str:
     if finding.margin and finding.headroom is not None:
         compared = (
             f": {figure(finding.actual)} against {figure(finding.limit)}, headroom "
-            f"{percent(finding.headroom)}, margin {percent(finding.margin)}"
+            f"{percent(finding.headroom)}, required {percent(finding.margin)}"
         )
     elif finding.actual is not None and finding.limit is not None:
         compared = f": {figure(finding.actual)} against {figure(finding.limit)}"
@@ -212,41 +241,37 @@ def _finding(finding: Finding) -> str:
     )
 
 
-def _print_design(judgement: Judgement, out: Console) -> None:
-    _head(out, "design")
+def _print_design(judgement: Judgement, out: _Page) -> None:
+    _head(out, "DESIGN")
     rows = []
     for choice, figures in zip(judgement.design.axes, judgement.axes, strict=True):
         motor = choice.motor + (f" ({choice.joining})" if choice.joining else "")
+        peak, rms = f"{choice.peak:.3g} A peak", f"{choice.peak / 2**0.5:.3g} A RMS"
+        by_rms = figures.current_basis == "rms"
         rows.append(
             (
                 choice.axis,
                 motor,
                 choice.driver,
-                f"{choice.peak:.3g} A",
-                f"{choice.peak / 2**0.5:.3g} A",
-                f"{figures.rest_current_peak:.3g} A",
+                rms if by_rms else peak,
+                peak if by_rms else rms,
+                f"{figures.rest_current_peak / choice.peak:.0%}",
                 f"1/{figures.microsteps}",
             )
         )
-    out.print(
-        _table(
-            ("axis", "motor", "driver", "set, peak", "= RMS", "at rest, peak", "step"), rows, left=3
-        )
-    )
+    columns = ("axis", "motor", "driver", "set on driver", "which is", "at rest", "step")
+    out.print(_table(columns, rows, left=3, folds=(0,)))
     for bus in judgement.design.buses:
         unit = "no supply named" if bus.supply is None else f"{bus.count} x {bus.supply}"
         out.print(Text(f"  bus: {bus.voltage:g} V from {unit}, all axes"))
 
 
-def _print_headrooms(judgement: Judgement, out: Console) -> None:
-    _head(out, "headrooms, and where each axis has least")
-    by_axis: dict[tuple[str, str], Finding] = {(f.subject, f.rule): f for f in judgement.findings}
+def _print_headrooms(judgement: Judgement, out: _Page) -> None:
+    _head(out, "HEADROOMS, AND WHERE EACH AXIS HAS LEAST")
+    found = {(f.subject, f.rule): f for f in judgement.findings}
     rows = []
     for figures in judgement.axes:
-        worst = figures.worst_point
-        heat = by_axis[figures.axis, "winding temperature"]
-        hold = by_axis[figures.axis, "holding"]
-        limit = "-" if heat.limit is None else f"{heat.limit.value:.0f}"
+        worst, hold = figures.worst_point, found[figures.axis, "holding"]
         rows.append(
             (
                 figures.axis,
@@ -258,39 +283,44 @@ def _print_headrooms(judgement: Judgement, out: Console) -> None:
                 percent(hold.headroom),
                 heated(figures.winding_temperature),
                 heated(figures.winding_temperature_high),
-                limit,
+                f"{figures.winding_limit:.0f}",
                 f"{figures.case_temperature:.0f}",
             )
         )
-    out.print(
-        _table(
-            (
-                "axis",
-                "torque",
-                "needs N*m",
-                "has N*m",
-                "at rpm",
-                "of",
-                "holding",
-                "winding",
-                "if lossy",
-                "limit",
-                "case",
-            ),
-            rows,
-        )
+    columns = (
+        "axis",
+        "torque",
+        "needs N*m",
+        "has N*m",
+        "at rpm",
+        "of",
+        "holding",
+        "winding",
+        "lossy",
+        "limit",
+        "case",
     )
-    for bus in judgement.buses:
-        out.print(
-            Text(
-                f"  supply {percent(bus.supply_headroom)}; "
-                "20 % headroom is 83 % loading. Required figures contain no margin."
+    out.print(_table(columns, rows, folds=(0, 5)))
+    torque = found[judgement.axes[0].axis, "torque"].margin
+    peak = found["bus", "supply peak power"]
+    _lines(
+        out,
+        [
+            f"Required: torque and holding {percent(torque)}; what is needed contains no margin.",
+            "Winding (and if its iron is lossy), its limit, and the motor's case in degC.",
+            f"Supply: headroom {percent(peak.headroom)}"
+            + (
+                ""
+                if peak.headroom is None
+                else f", which is {1 / (1 + peak.headroom):.0%} loading; required {percent(peak.margin)}"
             )
-        )
+            + ".",
+        ],
+    )
 
 
-def _print_chain(judgement: Judgement, out: Console) -> None:
-    _head(out, "torque from ideal to usable at that point, N*m")
+def _print_chain(judgement: Judgement, out: _Page) -> None:
+    _head(out, "TORQUE FROM IDEAL TO USABLE AT THAT POINT, N*m")
     steps = [step.step for step in judgement.axes[0].chain]
     rows = [
         (
@@ -303,13 +333,21 @@ def _print_chain(judgement: Judgement, out: Console) -> None:
         )
         for figures in judgement.axes
     ]
-    names = ["ideal", *(f"- {name}" for name in steps[1:])]
-    out.print(_table(("axis", *names, "factor", "V share"), rows))
+    names = ["ideal", *(f"after {name}" for name in steps[1:-1]), "usable"]
+    columns = ("axis", *names, "ideal/usable", "V share")
+    out.print(_table(columns, rows, folds=(0,)))
+    _lines(
+        out,
+        [
+            "V share: voltage that the full current asks for, over the bus; torque falls above "
+            "1, damping above 0.8."
+        ],
+    )
 
 
-def _print_load(judgement: Judgement, out: Console) -> None:
+def _print_load(judgement: Judgement, out: _Page) -> None:
     for bus, figures in zip(judgement.design.buses, judgement.buses, strict=True):
-        _head(out, f"load of the {bus.voltage:g} V supply")
+        _head(out, f"LOAD OF THE {bus.voltage:g} V SUPPLY")
         available = figures.available_power
 
         def row(
@@ -331,27 +369,33 @@ def _print_load(judgement: Judgement, out: Console) -> None:
         rows += [
             row("rule of thumb", figures.rule_of_thumb_current * bus.voltage),
             row("all phase amperes + 20 %", figures.naive_current * bus.voltage),
-            row("every axis jammed", figures.worst_power),
+            row("every axis at pull-out", figures.worst_power),
         ]
         out.print(_table(("", "power", "current", "loading"), rows))
-        out.print(Text("  The last three are for comparison only and decide nothing."))
-
-
-def _print_braking(judgement: Judgement, out: Console) -> None:
-    _head(out, "braking: emergency stop of all axes at once")
-    for figures in judgement.buses:
-        risen = figures.highest_voltage
-        shown = "without limit" if risen is None else f"to {risen:.1f} V"
-        out.print(
-            Text(
-                f"  {figures.returned_energy:.3g} J into {1e6 * figures.capacitance:.0f} uF lift "
-                f"the bus {shown}; limit {figures.voltage_limit:.1f} V"
-            )
+        _lines(
+            out,
+            [
+                "Rule of thumb: half the rated current per motor at 24 V, a third from 36 V on. The "
+                "last three rows are for comparison only and decide nothing."
+            ],
         )
 
 
-def _print_next(answer: Answer, out: Console) -> None:
-    _head(out, "the next higher setting of each driver would give")
+def _print_braking(judgement: Judgement, out: _Page) -> None:
+    _head(out, "BRAKING: EMERGENCY STOP OF ALL AXES AT ONCE")
+    for figures in judgement.buses:
+        energy, risen = figures.returned_energy, figures.highest_voltage
+        highest = "without limit" if risen is None else f"to {risen:.1f} V"
+        if figures.absorbs_energy:
+            text = f"{energy:.3g} J go back into the supply; the bus stays at {risen:.1f} V"
+        else:
+            held = f"{1e6 * figures.capacitance:.0f} uF that count"
+            text = f"{energy:.3g} J into {held} lift the bus {highest}"
+        out.print(Text(f"  {text}; limit {figures.voltage_limit:.1f} V"))
+
+
+def _print_next(answer: Answer, out: _Page) -> None:
+    _head(out, "THE NEXT HIGHER SETTING OF EACH DRIVER WOULD GIVE")
     rows = [
         (
             row.axis,
@@ -363,11 +407,12 @@ def _print_next(answer: Answer, out: Console) -> None:
         )
         for row in answer.next_settings
     ]
-    out.print(_table(("axis", "peak", "torque", "peak power", "winding", "then"), rows))
+    columns = ("axis", "peak", "torque", "peak power", "winding", "then")
+    out.print(_table(columns, rows, folds=(0, 5)))
 
 
-def _print_order(judgement: Judgement, out: Console) -> None:
-    _head(out, "order")
+def _print_order(judgement: Judgement, out: _Page) -> None:
+    _head(out, "ORDER")
     currency = judgement.currency
     rows = []
     for line in judgement.order:
@@ -385,17 +430,22 @@ def _print_order(judgement: Judgement, out: Console) -> None:
                 money(line.line_price, currency),
             )
         )
-    out.print(
-        _table(("part", "", "from", "number", "stock", "lead", "each", "price"), rows, left=3)
-    )
-    totals = judgement.totals
-    volume = "-" if totals.volume is None else f"{1000 * totals.volume:.3g} dm^3"
-    mass = "-" if totals.mass is None else f"{totals.mass:.3g} kg"
+    columns = ("part", "", "from", "number", "stock", "lead", "each", "price")
+    out.print(_table(columns, rows, left=3, folds=(0, 2)))
+    totals, machines = judgement.totals, judgement.quantity
+    volume = "volume unknown" if totals.volume is None else f"{1000 * totals.volume:.3g} dm^3"
+    mass = "mass unknown" if totals.mass is None else f"{totals.mass:.3g} kg"
     out.print(Text(f"  one machine: {money(totals.cost, currency)}, {volume}, {mass}"))
+    if machines > 1:
+        paid = None if totals.cost is None else machines * totals.cost
+        out.print(Text(f"  all {machines} machines: {money(paid, currency)}"))
+    leads = [line.lead_time for line in judgement.order if line.lead_time is not None]
+    if leads:
+        out.print(Text(f"  longest lead time: {max(leads):g} days"))
 
 
-def _print_proof(answer: Answer, out: Console) -> None:
-    _head(out, "how we know")
+def _print_proof(answer: Answer, out: _Page) -> None:
+    _head(out, "HOW WE KNOW")
     proof = answer.proof
     rows = [
         f"{proof.pairs} pairs of motor and driver (each joining counted) at "
@@ -409,13 +459,18 @@ def _print_proof(answer: Answer, out: Console) -> None:
             "Proved: no choice from this catalogue does better, by this model and list of voltages."
         )
     else:
-        gap = (
-            "no bound is known" if proof.gap is None else f"at most {percent(proof.gap, 1)} better"
-        )
-        rows.append(f"Not proved: the search was stopped; another design could be {gap}.")
+        rows.append("Not proved: the search was stopped; " + _gap(proof.gap))
     if proof.second_route:
         rows.append(f"Second route: {proof.second_route}.")
     _lines(out, [*rows, *_exclusions(answer)])
+
+
+def _gap(gap: float | None) -> str:
+    if gap is None:
+        return "no bound is known."
+    if gap == 0.0:
+        return "the goal is at its best, only the order among equals is open."
+    return f"another design could be at most {percent(gap, 1)} better."
 
 
 def _voltages(voltages: Sequence[float]) -> str:
@@ -441,7 +496,7 @@ def _exclusions(answer: Answer) -> list[str]:
     return shown
 
 
-def _print_none(answer: Answer, out: Console) -> None:
+def _print_none(answer: Answer, out: _Page) -> None:
     """No design: which rule turned away what, and what stands in the way."""
     if answer.verdict == "not proved":
         out.print(Text(f"{answer.machine}: stopped before any design was known", style="bold"))
@@ -449,26 +504,24 @@ def _print_none(answer: Answer, out: Console) -> None:
     out.print(Text(f"{answer.machine}: no design exists", style="bold"))
     _lines(out, answer.reasons)
     stuck = {reason.removeprefix("no option fits axis ") for reason in answer.reasons}
-    rows = [row for row in answer.rejections if not stuck & _axes(answer) or row.axis in stuck]
+    rows = [row for row in answer.rejections if row.axis in stuck]
     if rows:
-        _head(out, "options turned away, by the first rule each breaks")
-        out.print(
-            _table(
-                ("axis", "rule", "options", "needs", "has", "nearest miss"),
-                [_rejection(row) for row in rows],
-                left=2,
-            )
-        )
-    _head(out, "how we know")
+        _head(out, "OPTIONS TURNED AWAY, BY THE FIRST RULE EACH BREAKS")
+        columns = ("axis", "rule", "options", "needs", "has", "headroom", "nearest miss")
+        out.print(_table(columns, [_rejection(row) for row in rows], left=2, folds=(0, 6)))
+    _head(out, "HOW WE KNOW")
     _lines(out, [f"Second route: {answer.proof.second_route}.", *_exclusions(answer)])
 
 
-def _axes(answer: Answer) -> set[str]:
-    return {row.axis for row in answer.rejections}
-
-
 def _rejection(row: Rejection) -> tuple[str, ...]:
-    return (row.axis, row.rule, str(row.count), figure(row.needs), figure(row.best), row.nearest)
+    headroom = "-"
+    if row.needs is not None and row.best is not None and row.needs.unit != "degC":
+        short = row.best.value / row.needs.value - 1.0 if row.needs.value else None
+        headroom = percent(short, 2 if short is not None and abs(short) < 0.01 else 0)
+        if row.margin:
+            headroom += f" of {percent(row.margin)}"
+    needs, best = (figure(q, 5) for q in (row.needs, row.best))
+    return row.axis, row.rule, str(row.count), needs, best, headroom, row.nearest
 
 
 # -- catalogue --------------------------------------------------------------------------------
@@ -476,12 +529,12 @@ def _rejection(row: Rejection) -> tuple[str, ...]:
 
 def print_catalogue(catalogue: Catalogue, path: str, stream: TextIO) -> None:
     """Every part of a catalogue in one line."""
-    out = console(stream)
+    out = _Page(stream)
     counts = f"{len(catalogue.motors)} motors, {len(catalogue.drivers)} drivers, " + (
         f"{len(catalogue.supplies)} supplies"
     )
     out.print(Text(f"{path}: {counts}, no faults", style="bold"))
-    _head(out, "motors")
+    _head(out, "MOTORS")
     out.print(
         _table(
             (
@@ -513,7 +566,7 @@ def print_catalogue(catalogue: Catalogue, path: str, stream: TextIO) -> None:
             ],
         )
     )
-    _head(out, "drivers")
+    _head(out, "DRIVERS")
     out.print(
         _table(
             ("part", "voltage", "settings, peak", "finest step", "motors", "price", "stock"),
@@ -531,7 +584,7 @@ def print_catalogue(catalogue: Catalogue, path: str, stream: TextIO) -> None:
             ],
         )
     )
-    _head(out, "supplies")
+    _head(out, "SUPPLIES")
     out.print(
         _table(
             ("part", "voltage", "trim", "power", "current", "units", "price", "stock"),
@@ -550,6 +603,7 @@ def print_catalogue(catalogue: Catalogue, path: str, stream: TextIO) -> None:
             ],
         )
     )
+    out.finish()
 
 
 def _price(price: Money | None) -> str:

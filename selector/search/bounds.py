@@ -142,3 +142,14 @@ class Bounds:
         taken_up = self.room[cell.rail, cell.level] * self.feed_held[here]
         sums = self.feed_goal[here] - cell.watt * self.feed_power[here] - cell.joule * taken_up
         return here[sums <= self._left(cell, cell.feed, ceiling)]
+
+    def few(self, cell: CellBound, table: AxisTable, count: int) -> Array:
+        """The ``count`` best adequate options of an axis at a rail, for each pair of prices."""
+        o = table.at_rail[cell.rail]
+        keep = np.zeros(len(o), dtype=bool)
+        allowed = self.allowed[cell.level][o.driver]
+        goal, energy = self.pair_goal[o.winding, o.driver], table.energy[o.winding, o.driver]
+        for watt, joule in self.prices:
+            sums = np.where(allowed, goal + watt * o.peak + joule * energy, NONE)
+            keep[np.argsort(sums, kind="stable")[:count]] = True
+        return keep & allowed

@@ -131,7 +131,7 @@ def reduced_options(offers: Offers, options: Options, startup: bool) -> Options:
         [
             t["winding_amounts"][options.winding] + t["driver_amounts"][options.driver],
             up(options.peak, POWER_SCALE),
-            up(options.energy, ENERGY_SCALE),
+            up(options.energy, ENERGY_SCALE, 0.0),
             -held,
             held if startup else np.zeros_like(held),
         ]
@@ -224,7 +224,7 @@ class BusModel:
             own = down(room * self.offers.tables["C"], ENERGY_SCALE)
 
             def beyond(o: Options, own: Array = own) -> Array:
-                return up(o.energy, ENERGY_SCALE) - own[o.driver]
+                return up(o.energy, ENERGY_SCALE, 0.0) - own[o.driver]
 
             terms = self._over_axes(beyond, bus)
             most = sum(

@@ -155,7 +155,8 @@ class AxisTable:
             frame = winding.motor.frame
             if axis.frames and not any(abs(frame - f) < 1e-6 for f in axis.frames):
                 possible[w] = False
-                self._miss("frame", shape[1], winding.label, axis.frames[0], frame, 2.0)
+                near = min(axis.frames, key=lambda f: abs(frame - f))
+                self._miss("frame", shape[1], winding.label, near, frame, 1.0 + abs(frame - near))
             elif axis.accelerates and winding.motor.rotor_inertia is None:
                 possible[w] = False
                 self._miss("rotor inertia", shape[1], winding.label, None, None, 3.0)
@@ -201,6 +202,9 @@ class AxisTable:
         for point in self.axis.points:
             need = np.maximum(need, required_torque(self.axis, point, tables["J"]))
         least = self._modelled(need * (1.0 + machine.margins.torque)) / tables["K"]
+        if self.axis.stop_deceleration is not None:  # the stop must be one the setting can make
+            stop = self._inertia() * self.axis.stop_deceleration + self.axis.driving_torque
+            least = np.maximum(least, stop / (torque.MODEL_FACTOR * tables["K"]))
         below = self.settings[None, :, :] < (least * (1 - GUARD))[:, None, None]
         self.first_rank = below.sum(axis=2)
         setting = self._setting(
@@ -228,18 +232,21 @@ class AxisTable:
         detent = np.where(usable > 0, self.offers.tables["detent"], 0.0)
         return (usable + detent) / torque.MODEL_FACTOR
 
+    def _inertia(self) -> Array:
+        return self.offers.tables["J"] + (self.axis.load_inertia or 0.0)
+
     def _shaft_torque(self, point: Point) -> Array:
-        inertia = self.offers.tables["J"] + (self.axis.load_inertia or 0.0)
-        return point.torque + inertia * point.acceleration
+        return point.torque + self._inertia() * point.acceleration
 
     def _energy(self) -> Array:
         """Energy an emergency stop from top speed returns, for each pair. [J]"""
         t = self.offers.tables
-        inertia = (t["J"] + (self.axis.load_inertia or 0.0))[:, None]
+        inertia = self._inertia()[:, None]
         top, slow = self.axis.top_speed, self.axis.stop_deceleration
         if slow is None:
             return np.repeat(braking.kinetic_energy(inertia, top), len(t["R_b"]), axis=1)
-        cold = t["R_25"][:, None] + t["R_b"]
+        coldest = min(25.0, self.offers.problem.machine.ambient)
+        cold = torque.winding_resistance(t["R_25"], coldest)[:, None] + t["R_b"]
         brake = inertia * slow + self.axis.driving_torque
         return braking.returned_energy(top, brake, slow, cold, t["K"][:, None])
 
@@ -278,8 +285,9 @@ class AxisTable:
 
     def _note_weak(self, weak: Array, least: Array) -> None:
         w, d = np.nonzero(weak)
-        top = np.nan_to_num(np.nanmax(self.settings, axis=1, initial=0.0))[d]
-        top = np.minimum(top, 2**0.5 * self.offers.tables["I_r"][w])
+        bearable = 2**0.5 * self.offers.tables["I_r"][w] * (1 + GUARD)
+        offered = self.settings[d]
+        top = np.nan_to_num(np.where(offered <= bearable[:, None], offered, 0.0)).max(axis=1)
         ratio = least[w] / np.maximum(top, 1e-12)
         k = int(np.argmin(ratio))
         label = f"{self.offers.windings[w[k]].label} with {self.offers.drivers[d[k]].part}"
@@ -310,6 +318,7 @@ class AxisTable:
 
     def rejections(self) -> list[Rejection]:
         """The funnel: how many options each rule turned away first."""
+        margins = self.offers.problem.machine.margins
         rows = []
         for rule, miss in self.misses.items():
             if miss.count:
@@ -324,6 +333,7 @@ class AxisTable:
                         count=miss.count,
                         needs=needs,
                         best=best,
+                        margin=margins.torque if rule in ("torque", "holding") else 0.0,
                         nearest=miss.label,
                     )
                 )
@@ -457,6 +467,7 @@ class _Judged:
         """Which rows are adequate, which no larger setting can mend, and the adequate ones."""
         self.rest()
         self.heat()
+        self.warm_holding()
         self.torque()
         keep = self.alive
         return keep, self.hopeless, self.options()
@@ -484,13 +495,26 @@ class _Judged:
         held = full * self.rest_share
         with np.errstate(divide="ignore"):
             miss = need / np.maximum(held, 1e-12)
-        self.fail("holding", held < need * (1 + GUARD), np.full_like(held, need), held, miss)
+        bare = np.full_like(held, self.axis.holding_torque or 0.0)
+        self.fail("holding", held < need * (1 + GUARD), bare, held, miss)
         if not self.axis.above_rated_at_rest:
             at_rest = self.rest_share * self.I
             too_much = at_rest > self.I_r * (1 + GUARD)
             self.fail("rest current", too_much, at_rest, self.I_r, at_rest / self.I_r)
             if not self.axis.reduce_at_rest:
                 self.hopeless |= too_much
+
+    def warm_holding(self) -> None:
+        """Holding again, with what the supply's low end drives through the warm winding."""
+        need = (self.axis.holding_torque or 0.0) * (1.0 + self.machine.margins.torque)
+        if need <= 0.0:
+            return
+        R = torque.winding_resistance(self.R_25, self.temperature) + self.R_b
+        flows = np.minimum(self.rest_share * self.I, self.V * (1.0 - self.spread) / R)
+        held = torque.standstill_torque(self.K, flows)
+        ratio = need / np.maximum(held, 1e-12)
+        bare = np.full_like(held, self.axis.holding_torque or 0.0)
+        self.fail("holding", held < need * (1 + GUARD), bare, held, ratio)
 
     def currents(self, point: Point, R: Array, rows: Array) -> power.Currents:
         asked = self.signed_torque(point)[rows]
@@ -563,7 +587,7 @@ class _Judged:
             self.rise[rows], self.I_r[rows], self.R_25[rows]
         )
         temperature = np.full(len(rows), self.machine.ambient)
-        for _ in range(60):
+        for step in range(60):
             R = torque.winding_resistance(self.R_25[rows], temperature) + self.R_b[rows]
             copper, iron = np.zeros(len(rows)), np.zeros(len(rows))
             for share, point in scene:
@@ -584,8 +608,11 @@ class _Judged:
                 )
             before = temperature
             temperature = thermal.steady_temperature(self.machine.ambient, to_air, copper, iron)
-            if np.max(np.abs(temperature - before), initial=0.0) < 1e-8:
+            apart = np.abs(temperature - before) >= 1e-8
+            if not apart.any():
                 break
+            if step >= thermal.PLAIN_STEPS:  # two states take turns: close in on the middle
+                temperature = np.where(apart, (temperature + before) / 2.0, temperature)
         return temperature
 
     def torque(self) -> None:
@@ -613,7 +640,7 @@ class _Judged:
                     usable[near] = self.usable(at, near, stated).min(axis=0)
                     usable[np.setdiff1d(np.flatnonzero(short), near)] = 0.0
                 ratio = need / np.maximum(usable, 1e-9)
-                self.fail("torque", short, need, usable, ratio)
+                self.fail("torque", short, need / margin, usable, ratio)
 
     def speeds(self, point: Point, rows: Array) -> list[Array]:
         """Speeds a point is judged at, one array over the rows for each."""

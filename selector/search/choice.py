@@ -25,11 +25,13 @@ from .bounds import Bounds, CellBound
 from .bus_model import RULES, Bus, BusModel, Choice, feed_room, reduced_feeds, reduced_options
 from .candidates import AxisTable, Options
 from .cpsat import CpSat, Deadline
-from .offers import Offers, offers_of
+from .offers import MASS_SCALE, MONEY_SCALE, VOLUME_SCALE, Offers, down, offers_of
 
 Array = Any
 BATCH = 64  # rails judged at once
 GUESS = 0.10  # how far above the least bound the first goal is guessed, step by step
+FEW, FEW_RAILS = 2, 4  # options for each pair of prices, and rails, of a design to begin with
+DUST = 1.0  # a step of the goal, for float dust in bounds
 PATIENCE = 10  # steps before they double: a machine without any design must not take for ever
 Progress = Callable[[str], None]
 
@@ -45,6 +47,7 @@ class Result:
     bound: int | None = None  # of the first goal, proved
     solves: int = 0
     reasons: list[str] = field(default_factory=list)
+    relaxed: dict[str, Choice] = field(default_factory=dict)  # designs that break one rule only
     second_route: str = ""
 
 
@@ -55,12 +58,44 @@ def choose(
 
     Ctrl-C ends the search and keeps the best design so far.
     """
-    search = _Search(problem, Deadline(seconds), progress)
+    name, limit = _limit_on_first_goal(problem)
+    search = _Search(_without(problem, name), Deadline(seconds), progress)
+    result = search.result
     try:
         search.run()
     except (KeyboardInterrupt, _StopSearch):
-        search.result.verdict = "not proved"
-    return search.result
+        result.verdict = "not proved"
+    if limit is not None and result.choice is not None and result.choice.values[0] > limit:
+        if result.verdict == "proved":
+            result.verdict = "none exists"
+            result.relaxed[f"the {name} limit"] = result.choice
+            result.second_route = "the best design without that limit is proved, and lies beyond it"
+        result.choice = None
+    return result
+
+
+def _limit_on_first_goal(problem: Problem) -> tuple[str, int | None]:
+    """The limit that can be left out of the rows, as it only forbids the best design or does not.
+
+    Returns the limit's name and its steps; an empty name if there is none on the first goal.
+    """
+    minimise, limits = problem.machine.minimise, problem.machine.limits
+    first = minimise[0] if isinstance(minimise, tuple) else ""
+    if first == "cost" and limits.price is not None:
+        return "price", int(limits.price.amount * MONEY_SCALE)
+    if first == "volume" and limits.volume is not None:
+        return first, int(down(limits.volume, VOLUME_SCALE))
+    if first == "mass" and limits.mass is not None:
+        return first, int(down(limits.mass, MASS_SCALE))
+    return "", None
+
+
+def _without(problem: Problem, limit: str) -> Problem:
+    if not limit:
+        return problem
+    limits = problem.machine.limits.model_copy(update={limit: None})
+    machine = problem.machine.model_copy(update={"limits": limits})
+    return problem.model_copy(update={"machine": machine})
 
 
 class _StopSearch(Exception):
@@ -109,8 +144,22 @@ class _Search:
             ("supply voltage", self.offers.feeds),
         ):
             if not offered:
-                self.result.reasons.append(f"no {name} is left that may be chosen")
+                why = self._why_no_voltage() if offered is self.offers.feeds else ""
+                self.result.reasons.append(f"no {name} is left that may be chosen{why}")
         self.result.second_route = "nothing is on offer, so nothing can be chosen"
+
+    def _why_no_voltage(self) -> str:
+        """What bounds the bus voltage from outside."""
+        limits, bounds = self.machine.limits.voltage, []
+        if limits.min is not None or limits.max is not None:
+            low = "" if limits.min is None else f" from {limits.min:g} V"
+            high = "" if limits.max is None else f" up to {limits.max:g} V"
+            bounds.append(f"limits of the bus{low}{high}")
+        bounds += [
+            f"{load.load} {load.supply_voltage.min:g} to {load.supply_voltage.max:g} V"
+            for load in self.machine.loads
+        ]
+        return f" ({'; '.join(bounds)})" if bounds else ""
 
     # -- judging and solving, best rails first ----------------------------------------------
 
@@ -123,7 +172,8 @@ class _Search:
         rails = range(len(self.offers.rails))
         self.cells = {rail: self.bounds.cells(rail) for rail in rails}
         self.judged_to = np.full(len(rails), -np.inf)
-        heap = [(min(c.floor for c in at), rail) for rail, at in self.cells.items() if at]
+        solved_to = np.full(len(rails), -np.inf)  # no design at or below, proved
+        heap = [(self._key(rail, solved_to), rail) for rail in rails if self.cells[rail]]
         heapq.heapify(heap)
         step, raises = GUESS, 0
         guess = heap[0][0] * (1.0 + step) if heap else np.inf
@@ -131,11 +181,9 @@ class _Search:
             self.bounds.feed_goal.max()
         )
         while heap:
-            self.result.bound = int(min(heap[0][0], self.ceiling))
-            if self.deadline.left() == 0.0:
-                raise _StopSearch
+            self._prove_bound(heap[0][0])
             if heap[0][0] > min(guess, self.ceiling):
-                if heap[0][0] > self.ceiling:
+                if heap[0][0] >= self.ceiling + DUST:
                     return
                 guess = max(guess, heap[0][0]) * (1.0 + step) + 1.0
                 raises += 1
@@ -146,6 +194,7 @@ class _Search:
             if self.judged_to[batch[0]] >= ceiling:
                 for cell in sorted(self.cells[batch[0]], key=lambda c: c.floor):
                     self._solve_cell(cell, min(guess, self.ceiling - 1))
+                solved_to[batch[0]] = ceiling
                 if np.isfinite(ceiling):
                     heapq.heappush(heap, (ceiling + 1.0, batch[0]))
                 continue
@@ -157,11 +206,36 @@ class _Search:
             for rail in batch:
                 self.cells[rail] = self.bounds.cells(rail)
                 if self.cells[rail]:
-                    heapq.heappush(heap, (min(c.floor for c in self.cells[rail]), rail))
+                    heapq.heappush(heap, (self._key(rail, solved_to), rail))
+            if self.result.choice is None:
+                self._first_design([rail for _, rail in heapq.nsmallest(FEW_RAILS, heap)])
+
+    def _key(self, rail: int, solved_to: Array) -> float:
+        """What no design at a rail goes below: its bound, or what was solved without one."""
+        return max(min(c.floor for c in self.cells[rail]), float(solved_to[rail]) + 1.0)
+
+    def _prove_bound(self, least: float) -> None:
+        """Keep the best bound proved so far; leave when the time is up."""
+        if np.isfinite(bound := min(least, self.ceiling)):
+            self.result.bound = max(self.result.bound or 0, int(bound))
+        self._check_time()
+
+    def _check_time(self) -> None:
+        if self.deadline.left() == 0.0:
+            raise _StopSearch
+
+    def _first_design(self, rails: list[int]) -> None:
+        """A design to begin with, from the few best options at the rails of least bound."""
+        for rail in rails:
+            for cell in self.cells[rail]:
+                model = self._model(cell, np.inf, FEW)
+                if model is not None:
+                    self._take(model, np.inf)
 
     def _judge(self, rails: list[int], ceiling: float) -> None:
         """Judge all that could be in a design at these rails at or below a ceiling."""
         for table in self.bounds.unique:
+            self._check_time()
             self.progress(f"judging parts for axis {table.axis.axis}")
             wanted = np.zeros_like(table.judged)
             for rail in rails:
@@ -173,12 +247,17 @@ class _Search:
     def _solve_cell(self, cell: CellBound, ceiling: float) -> None:
         """Look for a design at or below a ceiling in one cell."""
         model = self._model(cell, ceiling)
-        if model is None:
-            return
+        if model is not None:
+            self._take(model, ceiling)
+
+    def _take(self, model: BusModel, ceiling: float) -> None:
+        """Solve a model for something better than the best design, and not above a ceiling."""
+        self._check_time()
         self.progress("solving")
         solver = CpSat(model.model)
-        if np.isfinite(ceiling):
-            solver.add(model.goals[0], int(ceiling))
+        most = min(ceiling, self.ceiling - 1)
+        if np.isfinite(most):
+            solver.add(model.goals[0], int(most))
         outcome = solver.minimise(model.goals[0], self.deadline)
         self.result.solves += 1
         if outcome.taken is not None:
@@ -186,9 +265,12 @@ class _Search:
         if outcome.status in ("feasible", "unknown"):
             raise _StopSearch
 
-    def _model(self, cell: CellBound, ceiling: float) -> BusModel | None:
-        """The model of one cell, of what could be at or below a ceiling; None if empty."""
-        if cell.floor > ceiling or self._needless(cell):
+    def _model(self, cell: CellBound, ceiling: float, few: int | None = None) -> BusModel | None:
+        """The model of one cell, of what could be at or below a ceiling; None if empty.
+
+        ``few`` keeps only that many options of an axis for each pair of prices.
+        """
+        if cell.floor > ceiling + DUST or self._needless(cell):
             return None
         feeds = [self.offers.feeds[k] for k in self.bounds.feeds(cell, ceiling)]
         feeds = reduced_feeds(self.offers, feeds)
@@ -196,6 +278,8 @@ class _Search:
         kept: dict[int, Options] = {}
         for table in self.bounds.unique:
             rows = self.bounds.options(cell, table, ceiling)
+            if few is not None:
+                rows &= self.bounds.few(cell, table, few)
             options = table.at_rail[cell.rail].pick(np.flatnonzero(rows))
             kept[id(table)] = reduced_options(self.offers, options, startup)
         limit = float(self.bounds.levels[cell.level])
@@ -254,7 +338,7 @@ class _Search:
     def _cells_at(self, value: int) -> Iterator[CellBound]:
         for rail in range(len(self.offers.rails)):
             for cell in self.bounds.cells(rail):
-                if cell.floor <= value:
+                if cell.floor <= value + DUST:
                     yield cell
 
     def _first_of_cell(self, model: BusModel, value: int) -> Choice | None:
@@ -296,6 +380,10 @@ class _Search:
             self.result.reasons += [f"no option fits axis {name}" for name in names]
             return
         models = [m for m in self._all_models() if m.complete]
+        if not models:
+            self.result.second_route = "no voltage on offer has an option for every axis"
+            self.result.reasons.append("no voltage on offer has an option for every axis")
+            return
         for model in models:
             self.progress("confirming by the second solver")
             if milp.minimise(model.model, {}).status != "infeasible":
@@ -303,7 +391,7 @@ class _Search:
                     "CP-SAT finds no design and HiGHS does not agree; no verdict is given"
                 )
         self.result.second_route = f"HiGHS on the same rows, {len(models)} models: infeasible"
-        self.result.reasons += self._what_clashes(models)
+        self._what_clashes(models)
 
     def _has_none(self, table: AxisTable) -> bool:
         """Whether an axis has no adequate option at all, every one of them judged."""
@@ -319,26 +407,24 @@ class _Search:
                 if model is not None:
                     yield model
 
-    def _what_clashes(self, models: list[BusModel]) -> list[str]:
-        """Rules without which there would be a design, each tried by new solves."""
-        reasons = []
+    def _what_clashes(self, models: list[BusModel]) -> None:
+        """Rules without which there would be a design, each found by new solves."""
         for about in RULES:
             for model in models:
-                if any(row.about == about for row in model.model.rows):
-                    trial = CpSat(model.model.without(about))
-                    if trial.minimise({}, self.deadline).status == "optimal":
-                        reasons.append(f"without the rule on {about} there would be a design")
-                        break
-        if not reasons:
-            reasons.append("each axis has options by itself, but no choice of them fits together")
-        return reasons
+                if not any(row.about == about for row in model.model.rows):
+                    continue
+                outcome = CpSat(model.model.without(about)).minimise(model.goals[0], self.deadline)
+                if outcome.taken is not None:
+                    self.result.relaxed[about] = model.choice(outcome.taken)
+                    break
+        if not self.result.relaxed:
+            self.result.reasons.append(
+                "each axis has options by itself, but no choice of them fits together"
+            )
 
 
-def design_of(result: Result) -> Design | None:
-    """The design record of a result."""
-    choice, offers = result.choice, result.offers
-    if choice is None:
-        return None
+def design_of(offers: Offers, choice: Choice) -> Design:
+    """The design record of a choice."""
     machine = offers.problem.machine
     axes = []
     for axis, option in zip(machine.axes, choice.options, strict=True):

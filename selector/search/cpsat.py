@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import threading
 import time
 from collections.abc import Mapping
+from dataclasses import replace
 from typing import Any
 
 from .model import Model, Outcome
@@ -20,6 +22,24 @@ class Deadline:
     def left(self) -> float | None:
         """Seconds left, zero at the least; None without limit."""
         return None if self.end is None else max(0.0, self.end - time.monotonic())
+
+
+def _solve(solver: Any, model: Any) -> tuple[Any, bool]:
+    """Solve in a thread, so that Ctrl-C reaches Python at once; the status, and if it did.
+
+    The solver's own handler of the signal is off: it would leave none behind for the next solve.
+    """
+    solver.parameters.catch_sigint_signal = False
+    found: list[Any] = []
+    worker = threading.Thread(target=lambda: found.append(solver.solve(model)))
+    worker.start()
+    try:
+        worker.join()
+    except KeyboardInterrupt:
+        solver.stop_search()
+        worker.join()
+        return found[0], True
+    return found[0], False
 
 
 class CpSat:
@@ -81,7 +101,11 @@ class CpSat:
         left = deadline.left()
         if left is not None:
             solver.parameters.max_time_in_seconds = max(left, 0.001)
-        return self._outcome(solver, solver.solve(self.cp), terms)
+        status, stopped = _solve(solver, self.cp)
+        outcome = self._outcome(solver, status, terms)
+        if stopped and outcome.status == "optimal":  # the user wants out all the same
+            return replace(outcome, status="feasible")
+        return replace(outcome, status="unknown") if stopped and not outcome.taken else outcome
 
     def _outcome(self, solver: Any, status: Any, terms: Mapping[int, int]) -> Outcome:
         from ortools.sat.python import cp_model

