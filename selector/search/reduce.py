@@ -21,10 +21,11 @@ from typing import Any
 import numpy as np
 
 Array = Any
+BLOCK = 256  # rows compared at once with all before them
 
 
 def undominated(
-    key: Array, others: Array, stands_in: Callable[[int, Array], Array] | None = None
+    key: Array, others: Array, stands_in: Callable[[Array, Array], Array] | None = None
 ) -> Array:
     """Rows that no other row stands in for.
 
@@ -36,32 +37,39 @@ def undominated(
     others : array, rows × figures
         Everything else a row of the model sees, smaller is better: its integers, or the figures
         they are made of.
-    stands_in : function of (row, rows), optional
-        Which of ``rows`` may replace ``row`` as far as stock goes; all of them if not given.
+    stands_in : function of (column of rows, rows), optional
+        Which of the second may replace which of the first as far as stock goes; all if not given.
 
     Returns
     -------
     array
         Indices of the rows kept, in rising order.
+
+    Notes
+    -----
+    A row is compared with every earlier one, kept or not: standing in is transitive, so if a
+    dropped row stands in for it, a kept one does too.
     """
     count = len(key)
     order = np.lexsort((np.arange(count), *key.T[::-1]))
-    figures = np.hstack([key, others])
-    kept = np.zeros(count, dtype=np.int64)
-    table = np.empty_like(figures)
-    size = 0
-    for row in order:
-        better = kept[:size][(table[:size] <= figures[row]).all(axis=1)]
-        if len(better) and (stands_in is None or bool(stands_in(row, better).any())):
-            continue
-        kept[size], table[size] = row, figures[row]
-        size += 1
-    return np.sort(kept[:size])
+    figures = np.hstack([key, others])[order]
+    kept = np.ones(count, dtype=bool)
+    for start in range(0, count, BLOCK):
+        rows = np.arange(start, min(start + BLOCK, count))
+        earlier = np.arange(rows[-1] + 1)
+        beaten = np.ones((len(rows), len(earlier)), dtype=bool)
+        for column in figures.T:
+            beaten &= column[earlier] <= column[rows][:, None]
+        beaten &= earlier < rows[:, None]
+        if stands_in is not None:
+            beaten &= stands_in(order[rows][:, None], order[earlier])
+        kept[rows] = ~beaten.any(axis=1)
+    return np.sort(order[kept])
 
 
 def by_stock(
     motor: Array, driver: Array, ample_motor: Array, ample_driver: Array
-) -> Callable[[int, Array], Array]:
+) -> Callable[[Array, Array], Array]:
     """The stock half of the argument, as ``stands_in`` for :func:`undominated`.
 
     Parameters
@@ -72,7 +80,7 @@ def by_stock(
         Whether the part is in stock for every axis of every machine.
     """
 
-    def stands_in(row: int, rows: Array) -> Array:
+    def stands_in(row: Array, rows: Array) -> Array:
         return (ample_motor[motor[rows]] | (motor[rows] == motor[row])) & (
             ample_driver[driver[rows]] | (driver[rows] == driver[row])
         )
