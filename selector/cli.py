@@ -18,6 +18,7 @@ from .errors import InputFaults, SelectorError
 
 app = typer.Typer(
     add_completion=False,
+    context_settings={"help_option_names": ["-h", "--help"]},
     no_args_is_help=True,
     rich_markup_mode=None,
     pretty_exceptions_enable=False,

@@ -172,8 +172,8 @@ def steady_lowering(bus: BusCase) -> Findings:
     if over > 0:
         limit = min(bus.voltage_limit, bus.trip or bus.voltage_limit)
         note += (
-            f"; the other axes may take the rest, or a braking resistor of {limit**2 / over:.2g} "
-            f"ohm at most for {over:.2g} W at least"
+            f"; the other axes may take the rest, or a braking resistor of {limit**2 / over:.3g} "
+            f"ohm at most for {over:.3g} W at least"
         )
     state: State = "unknown" if over > 0 else "passes"
     yield finding("steady lowering", "bus", returned, consumed, "W", None, state, "derived", note)

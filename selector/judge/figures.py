@@ -33,7 +33,7 @@ def axis_figures(case: AxisCase) -> AxisFigures:
             usable_torque=float(chain.usable),
         ),
         chain=(
-            ChainStep(step="ideal motor", torque=float(chain.nominal), standing="derived"),
+            ChainStep(step="ideal", torque=float(chain.nominal), standing="derived"),
             ChainStep(step="model", torque=float(chain.modelled), standing="simulated"),
             ChainStep(step="tolerances", torque=float(chain.toleranced), standing="practice"),
             ChainStep(

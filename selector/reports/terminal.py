@@ -44,6 +44,10 @@ class _Page:
         )
         self.print = self.console.print
 
+    def title(self, text: str) -> None:
+        """The first line, which may hold long file names and is never cut."""
+        self.print(Text(text, style="bold"), soft_wrap=True)
+
     def finish(self) -> None:
         """Write it all."""
         lines = self.text.getvalue().splitlines()
@@ -158,7 +162,7 @@ def print_answer(answer: Answer, stream: TextIO) -> None:
         out.finish()
         return
     goals = ", ".join(_goal(g.name, g.value, g.unit) for g in answer.goals)
-    out.print(Text(f"{answer.machine}: {answer.verdict}, {goals}", style="bold"))
+    out.title(f"{answer.machine}: {answer.verdict}, {goals}")
     _print_judgement(answer.judgement, out, answer)
     out.finish()
 
@@ -167,9 +171,9 @@ def print_judgement(judgement: Judgement, stream: TextIO, name: str = "the desig
     """What ``judge`` found of the design of that name."""
     out = _Page(stream)
     machine = judgement.design.machine
-    out.print(Text(f"{name} for {machine}: the design {judgement.verdict}", style="bold"))
+    out.title(f"{name} for {machine}: the design {judgement.verdict}")
     for name in judgement.changed:
-        out.print(Text(f"  changed since the design was saved: {name}"))
+        out.print(Text(f"  changed since the design was saved: {name}"), soft_wrap=True)
     _print_judgement(judgement, out, None)
     out.finish()
 
@@ -212,17 +216,14 @@ def _print_states(judgement: Judgement, out: _Page) -> None:
             groups.setdefault((finding.rule, finding.note), []).append(finding.subject)
     for (rule, note), subjects in groups.items():
         _hang(out, "unknown", f"{rule} ({', '.join(dict.fromkeys(subjects))}): {note}")
-    for figures in judgement.axes:
-        if figures.winding_temperature_high > figures.winding_limit >= figures.winding_temperature:
-            _hang(
-                out,
-                "measure",
-                (
-                    f"winding of {figures.axis}: {heated(figures.winding_temperature)} degC, but up to "
-                    f"{heated(figures.winding_temperature_high)} degC if its iron is lossy; limit "
-                    f"{figures.winding_limit:.0f} degC"
-                ),
+    for axis in judgement.axes:
+        low, high = axis.winding_temperature, axis.winding_temperature_high
+        if high > axis.winding_limit >= low:
+            text = (
+                f"winding of {axis.axis}: {heated(low)} degC, but up to {heated(high)} degC if its "
+                f"iron is lossy; limit {axis.winding_limit:.0f} degC"
             )
+            _hang(out, "measure", text)
 
 
 def _finding(finding: Finding) -> str:
@@ -312,7 +313,8 @@ def _print_headrooms(judgement: Judgement, out: _Page) -> None:
             + (
                 ""
                 if peak.headroom is None
-                else f", which is {1 / (1 + peak.headroom):.0%} loading; required {percent(peak.margin)}"
+                else f", which is {percent(1 / (1 + peak.headroom))} loading; "
+                f"required {percent(peak.margin)}"
             )
             + ".",
         ],
@@ -333,14 +335,14 @@ def _print_chain(judgement: Judgement, out: _Page) -> None:
         )
         for figures in judgement.axes
     ]
-    names = ["ideal", *(f"after {name}" for name in steps[1:-1]), "usable"]
-    columns = ("axis", *names, "ideal/usable", "V share")
+    columns = ("axis", *steps[:-1], "usable", "ideal/usable", "V share")
     out.print(_table(columns, rows, folds=(0,)))
     _lines(
         out,
         [
-            "V share: voltage that the full current asks for, over the bus; torque falls above "
-            "1, damping above 0.8."
+            "Each column is what is left after that step.",
+            "V share: voltage that the full current asks for, over the bus; torque falls above 1, "
+            "damping above 0.8.",
         ],
     )
 
@@ -375,7 +377,7 @@ def _print_load(judgement: Judgement, out: _Page) -> None:
         _lines(
             out,
             [
-                "Rule of thumb: half the rated current per motor at 24 V, a third from 36 V on. The "
+                "Rule of thumb: half the rated current per motor at 24 V, a third from 36 V. The "
                 "last three rows are for comparison only and decide nothing."
             ],
         )
@@ -499,9 +501,9 @@ def _exclusions(answer: Answer) -> list[str]:
 def _print_none(answer: Answer, out: _Page) -> None:
     """No design: which rule turned away what, and what stands in the way."""
     if answer.verdict == "not proved":
-        out.print(Text(f"{answer.machine}: stopped before any design was known", style="bold"))
+        out.title(f"{answer.machine}: stopped before any design was known")
         return
-    out.print(Text(f"{answer.machine}: no design exists", style="bold"))
+    out.title(f"{answer.machine}: no design exists")
     _lines(out, answer.reasons)
     stuck = {reason.removeprefix("no option fits axis ") for reason in answer.reasons}
     rows = [row for row in answer.rejections if row.axis in stuck]
@@ -533,7 +535,7 @@ def print_catalogue(catalogue: Catalogue, path: str, stream: TextIO) -> None:
     counts = f"{len(catalogue.motors)} motors, {len(catalogue.drivers)} drivers, " + (
         f"{len(catalogue.supplies)} supplies"
     )
-    out.print(Text(f"{path}: {counts}, no faults", style="bold"))
+    out.title(f"{path}: {counts}, no faults")
     _head(out, "MOTORS")
     out.print(
         _table(
