@@ -63,7 +63,10 @@ def _head(out: _Page, text: str) -> None:
 
 
 def _table(
-    columns: Sequence[str], rows: Iterable[Sequence[str]], left: int = 1, folds: Sequence[int] = ()
+    columns: Sequence[str],
+    rows: Iterable[Sequence[str]],
+    left: int = 1,
+    folds: Sequence[int] = (0,),
 ) -> Padding:
     """Columns of text; the first ``left`` flush left, the others right; only ``folds`` may wrap."""
     table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="dim")
@@ -261,7 +264,7 @@ def _print_design(judgement: Judgement, out: _Page) -> None:
             )
         )
     columns = ("axis", "motor", "driver", "set on driver", "which is", "at rest", "step")
-    out.print(_table(columns, rows, left=3, folds=(0,)))
+    out.print(_table(columns, rows, left=3, folds=(0, 1, 2)))
     for bus in judgement.design.buses:
         unit = "no supply named" if bus.supply is None else f"{bus.count} x {bus.supply}"
         out.print(Text(f"  bus: {bus.voltage:g} V from {unit}, all axes"))
