@@ -45,8 +45,8 @@ class _Page:
         self.print = self.console.print
 
     def title(self, text: str) -> None:
-        """The first line, which may hold long file names and is never cut."""
-        self.print(Text(text, style="bold"), soft_wrap=True)
+        """The first line."""
+        self.print(Text(text, style="bold"))
 
     def finish(self) -> None:
         """Write it all."""
@@ -176,7 +176,7 @@ def print_judgement(judgement: Judgement, stream: TextIO, name: str = "the desig
     machine = judgement.design.machine
     out.title(f"{name} for {machine}: the design {judgement.verdict}")
     for name in judgement.changed:
-        out.print(Text(f"  changed since the design was saved: {name}"), soft_wrap=True)
+        out.print(Text(f"  changed since the design was saved: {name}"))
     _print_judgement(judgement, out, None)
     out.finish()
 

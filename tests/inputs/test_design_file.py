@@ -154,7 +154,7 @@ def test_changed_inputs_are_named(rig, answer, capsys):
         "parts.yaml"
     ]
     assert run_app(["judge", str(rig / "design.yaml")]) == 0
-    assert "changed since the design was saved: " in capsys.readouterr().out
+    assert "changed since the design was saved:" in capsys.readouterr().out
 
 
 def test_added_and_dropped_inputs_are_named(rig, answer):
