@@ -150,6 +150,7 @@ def _goals(result: Result) -> tuple[Goal, ...]:
                 name=goal.name,
                 value=value / goal.scale,
                 unit=goal.unit,
+                step=1.0 / goal.scale,
                 proved_bound=None if bound is None else bound / goal.scale,
             )
         )

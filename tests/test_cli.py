@@ -407,7 +407,7 @@ def test_json_of_an_answer_keeps_its_promises(name, file, capsys):
     assert data["cautions"]
     assert data["verdict"] == ("proved" if name == "pick" else "holds")
     if name == "pick":
-        assert set(data["goal"]) == {"name", "value", "unit", "proved_bound"}
+        assert set(data["goal"]) == {"name", "value", "unit", "step", "proved_bound"}
         assert data["goal"] == data["goals"][0]
         assert all(len(entry["sha256"]) == 64 for entry in data["inputs"])
 

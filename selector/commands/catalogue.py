@@ -5,7 +5,7 @@ from __future__ import annotations
 import sys
 from pathlib import Path
 
-from ..reports import tables, terminal
+from ..reports import listing, tables
 from ..workflow import load_catalogue
 
 
@@ -15,5 +15,5 @@ def run(path: Path, as_json: bool) -> int:
     if as_json:
         print(tables.as_json(tables.catalogue_data(catalogue)))
     else:
-        terminal.print_catalogue(catalogue, str(path), sys.stdout)
+        listing.print_catalogue(catalogue, str(path), sys.stdout)
     return 0

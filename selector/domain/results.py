@@ -235,6 +235,7 @@ class Goal(Record):
     name: str
     value: float
     unit: str
+    step: float
     proved_bound: float | None
 
 

@@ -268,7 +268,7 @@ def _read_parts(root: Node, file: str, parts: dict[str, list[Part]], faults: lis
         if not currency.spoiled:
             found, expected = _written("currency", currency), "three capitals such as EUR"
             faults.append(Fault(file, *root.keys["currency"], "no-currency", found, expected))
-        currency = Node("XXX", currency.line, currency.column)
+        currency = Node("XTS", currency.line, currency.column)  # so that one fault brings no others
     for key, node in root.value.items():
         if key not in (*KINDS, "currency", "note"):
             hint = _known(key, [*KINDS, "currency", "note"])

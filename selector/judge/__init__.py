@@ -9,7 +9,7 @@ from __future__ import annotations
 from ..domain.machine import Problem
 from ..domain.results import Design, Finding, Judgement, NextSetting
 from . import axis_rules, bus_rules
-from .cases import BusCase
+from .bus_case import BusCase
 from .figures import axis_figures, bus_figures, order_lines, totals
 from .remarks import assumptions, cautions
 

@@ -6,7 +6,7 @@ from ..domain.parts import Driver
 from ..domain.results import State
 from ..physics import braking
 from .axis_rules import Findings, at_least, at_most, finding
-from .cases import BusCase
+from .bus_case import BusCase
 
 NONE = "no supply is named"
 

@@ -12,7 +12,8 @@ from ..domain.results import (
     WorstPoint,
 )
 from ..physics import braking, power, supply, thermal
-from .cases import AxisCase, BusCase
+from .bus_case import BusCase
+from .cases import AxisCase
 
 MOST_SIMULATED_DAMPING = 0.10
 

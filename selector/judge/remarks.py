@@ -7,7 +7,8 @@ from collections.abc import Iterable, Iterator
 from ..domain import parts as defaults
 from ..domain.results import Remark
 from ..physics import power, thermal
-from .cases import AxisCase, BusCase
+from .bus_case import BusCase
+from .cases import AxisCase
 
 STRONG_CHAIN, COARSE_RIPPLE, HEAVY_LOAD, HOT_CASE = 3.0, 0.3, 10.0, 60.0
 NEAR_RESONANCE = 0.15  # of the natural frequency

@@ -15,7 +15,6 @@ import numpy as np
 
 from ..domain.parts import Part
 from ..physics.braking import CAPACITOR_SHARE
-from .candidates import Options
 from .model import Model
 from .offers import (
     AMOUNTS,
@@ -30,6 +29,7 @@ from .offers import (
     down,
     up,
 )
+from .options import Options
 from .reduce import by_stock, undominated
 
 Array = Any

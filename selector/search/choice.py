@@ -23,9 +23,10 @@ from ..errors import WrongVerdict
 from . import milp
 from .bounds import Bounds, CellBound
 from .bus_model import RULES, Bus, BusModel, Choice, feed_room, reduced_feeds, reduced_options
-from .candidates import AxisTable, Options
+from .candidates import AxisTable
 from .cpsat import CpSat, Deadline
 from .offers import MASS_SCALE, MONEY_SCALE, VOLUME_SCALE, Offers, down, offers_of
+from .options import Options
 
 Array = Any
 BATCH = 64  # rails judged at once

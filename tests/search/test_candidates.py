@@ -13,8 +13,9 @@ from selector.domain.parts import AS_WOUND
 from selector.domain.results import AxisChoice
 from selector.judge import axis_rules
 from selector.judge.cases import AxisCase
-from selector.search.candidates import AxisTable, Combos, _Judged
+from selector.search.candidates import AxisTable
 from selector.search.offers import Offers, offers_of
+from selector.search.options import Combos, Judged
 
 
 def tables(seed: int) -> list[AxisTable]:
@@ -34,7 +35,7 @@ def every(table: AxisTable) -> Combos:
 
 def adequate(table: AxisTable, rows: Combos):
     """Whether each row is adequate, and the figures of those that are."""
-    judged = _Judged(table, rows)
+    judged = Judged(table, rows)
     keep, _, options = judged.outcome()
     return keep.copy(), options, judged.temperature[keep]
 
@@ -145,7 +146,7 @@ def test_above_a_setting_that_ends_its_row_none_takes_less_power_nor_runs_cooler
         if not len(rows):
             continue
         keep, options, temperature = adequate(table, rows)
-        flows = _Judged(table, rows).full_flow()[keep]
+        flows = Judged(table, rows).full_flow()[keep]
         order = np.lexsort((options.setting, options.rail, options.driver, options.winding))
         same = flows[order][:-1].copy()  # the smaller setting of two ends its row
         for name in ("winding", "driver", "rail"):
@@ -162,7 +163,7 @@ def test_a_setting_too_hot_leaves_no_larger_one_that_is_not(seed):
         if table.axis.reduce_at_rest:
             continue
         rows = every(table)
-        judged = _Judged(table, rows)
+        judged = Judged(table, rows)
         keep, hopeless, _ = judged.outcome()
         first_hopeless: dict[tuple[int, int, int], int] = {}
         for k in np.flatnonzero(hopeless):
