@@ -204,6 +204,25 @@ def stop_torque(case: AxisCase) -> Findings:
         )
 
 
+def start(case: AxisCase) -> Findings:
+    """An axis that states its inertia but no acceleration: does it start without a ramp?"""
+    speed = case.safe_start
+    reached = max((p.speed for p in case.axis.points if p.from_rest), default=0.0)
+    if speed is not None and not case.axis.accelerates and reached > speed:
+        note = "state the acceleration of its ramp; without one it starts only up to this limit"
+        yield finding(
+            "start",
+            case.axis.axis,
+            reached,
+            speed,
+            "rad/s",
+            speed / reached - 1.0,
+            "unknown",
+            "simulated",
+            note,
+        )
+
+
 def held_without_power(case: AxisCase) -> Findings:
     """A vertical axis needs a brake, a counterweight or a screw that does not run back."""
     if not case.axis.vertical:
@@ -346,6 +365,7 @@ RULES = (
     rest_current,
     holding,
     stop_torque,
+    start,
     held_without_power,
     step_rate,
     winding_temperature,

@@ -195,7 +195,6 @@ def _about_axes(bus: BusCase) -> Iterator[str]:
         (_lossy, "The winding could get too hot if the iron is as lossy as its band allows; "
                  "measure it: {}."),
         (_hot, "Motor cases get hot, guard against touch: {}."),
-        (_steep, "No acceleration is stated, and without a ramp these axes start only up to: {}."),
         (_heavy, "Load inertia over rotor inertia is above 10; expect ringing and lost steps in "
                  "sharp moves: {}."),
         (_resonant, "Steady running near the motor's own resonance, rough at low damping: {}."),
@@ -229,14 +228,6 @@ def _lossy(case: AxisCase) -> str:
 def _hot(case: AxisCase) -> str:
     heat = float(thermal.case_temperature(case.machine.ambient, case.temperature))
     return f"{case.axis.axis} {heat:.0f} degC" if heat > HOT_CASE else ""
-
-
-def _steep(case: AxisCase) -> str:
-    speed = case.safe_start
-    starts = any(p.from_rest and p.speed > (speed or 0.0) for p in case.axis.points)
-    if speed is None or case.axis.accelerates or not starts:
-        return ""
-    return f"{case.axis.axis} {speed * 30 / 3.141592653589793:.3g} rpm"
 
 
 def _heavy(case: AxisCase) -> str:

@@ -7,6 +7,7 @@ import os
 from collections.abc import Iterable, Sequence
 from typing import TextIO
 
+from rich.cells import cell_len
 from rich.console import Console
 from rich.padding import Padding
 from rich.table import Table
@@ -32,9 +33,11 @@ class Page:
         )
         self.print = self.console.print
 
-    def title(self, text: str) -> None:
-        """The first line."""
-        self.print(Text(text, style="bold"))
+    def title(self, file: str, said: str) -> None:
+        """The first line; what is said of a file with a long name stands below it, whole."""
+        together = f"{file}: {said}"
+        for line in [together] if cell_len(together) <= WIDTH else [f"{file}:", said]:
+            self.print(Text(line, style="bold"))
 
     def finish(self) -> None:
         """Write it all."""

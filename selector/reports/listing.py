@@ -16,7 +16,7 @@ def print_catalogue(catalogue: Catalogue, path: str, stream: TextIO) -> None:
     counts = f"{len(catalogue.motors)} motors, {len(catalogue.drivers)} drivers, " + (
         f"{len(catalogue.supplies)} supplies"
     )
-    out.title(f"{path}: {counts}, no faults")
+    out.title(path, f"{counts}, no faults")
     head(out, "MOTORS")
     out.print(
         table(

@@ -49,7 +49,7 @@ def print_answer(answer: Answer, stream: TextIO) -> None:
         out.finish()
         return
     goals = ", ".join(_goal(g.name, g.value, g.unit) for g in answer.goals)
-    out.title(f"{answer.machine}: {answer.verdict}, {goals}")
+    out.title(answer.machine, f"{answer.verdict}, {goals}")
     _print_judgement(answer.judgement, out, answer)
     out.finish()
 
@@ -58,7 +58,7 @@ def print_judgement(judgement: Judgement, stream: TextIO, name: str = "the desig
     """What ``judge`` found of the design of that name."""
     out = Page(stream)
     machine = judgement.design.machine
-    out.title(f"{name} for {machine}: the design {judgement.verdict}")
+    out.title(f"{name} for {machine}", f"the design {judgement.verdict}")
     for name in judgement.changed:
         out.print(Text(f"  changed since the design was saved: {name}"))
     _print_judgement(judgement, out, None)
@@ -100,7 +100,10 @@ def _print_states(judgement: Judgement, out: Page) -> None:
     groups: dict[tuple[str, str], list[str]] = {}
     for finding in judgement.findings:
         if finding.state == "unknown":
-            groups.setdefault((finding.rule, finding.note), []).append(finding.subject)
+            subject = finding.subject
+            if finding.rule == "start":
+                subject += f" {figure(finding.actual)}, limit {figure(finding.limit)}"
+            groups.setdefault((finding.rule, finding.note), []).append(subject)
     for (rule, note), subjects in groups.items():
         hang(out, "unknown", f"{rule} ({', '.join(dict.fromkeys(subjects))}): {note}")
     for axis in judgement.axes:
@@ -117,13 +120,13 @@ def _finding(finding: Finding) -> str:
     compared = ""
     if finding.margin and finding.headroom is not None:
         compared = (
-            f": {figure(finding.actual)} against {figure(finding.limit)}, headroom "
+            f": {figure(finding.actual, 5)} against {figure(finding.limit, 5)}, headroom "
             f"{percent(finding.headroom)}, required {percent(finding.margin)}"
         )
     elif finding.actual is not None and finding.limit is not None:
-        compared = f": {figure(finding.actual)} against {figure(finding.limit)}"
+        compared = f": {figure(finding.actual, 5)} against {figure(finding.limit, 5)}"
     elif finding.actual is not None:
-        compared = f": {figure(finding.actual)}"
+        compared = f": {figure(finding.actual, 5)}"
     return f"{finding.rule} ({finding.subject}){compared}" + (
         f"; {finding.note}" if finding.note else ""
     )
@@ -390,9 +393,9 @@ def _exclusions(answer: Answer) -> list[str]:
 def _print_none(answer: Answer, out: Page) -> None:
     """No design: which rule turned away what, and what stands in the way."""
     if answer.verdict == "not proved":
-        out.title(f"{answer.machine}: stopped before any design was known")
+        out.title(answer.machine, "stopped before any design was known")
         return
-    out.title(f"{answer.machine}: no design exists")
+    out.title(answer.machine, "no design exists")
     lines(out, answer.reasons)
     stuck = {reason.removeprefix("no option fits axis ") for reason in answer.reasons}
     rows = [row for row in answer.rejections if row.axis in stuck]

@@ -240,6 +240,8 @@ class AxisTable:
         ratio = least[w] / np.maximum(top, 1e-12)
         k = int(np.argmin(ratio))
         label = f"{self.offers.windings[w[k]].label} with {self.offers.drivers[d[k]].part}"
+        if np.isnan(offered[k]).all():
+            label += f", derated to nothing at {self.offers.problem.machine.ambient:g} degC"
         self._miss(
             "current setting", len(w), label, float(least[w[k]]), float(top[k]), float(ratio[k])
         )

@@ -178,7 +178,7 @@ def test_braking_decides_for_one_of_two_supplies():
 def test_a_design_cheaper_by_a_step_than_the_first_one_found_is_found(steps):
     """The few best options of an axis are short in stock or light but dear; the best design takes
     the one that is neither."""
-    scarce = [make_motor(f"scarce-{k}", price=euros(20), stock=1) for k in range(search.FEW)]
+    scarce = [make_motor(f"scarce-{k}", price=euros("23.9"), stock=1) for k in range(search.FEW)]
     light = make_motor("light", price=euros("24.0000"), phase_resistance=0.3)
     wanted = make_motor("wanted", price=euros(f"23.{10_000 - steps}"), phase_resistance=1.0)
     axes = tuple(make_axis(f"axis-{k}") for k in range(search.FEW + 1))
@@ -268,6 +268,25 @@ def test_a_limit_on_another_goal_exactly_at_the_least(goal, first):
     assert agreed(limited(goal, least - 1, (first,))).key is None
 
 
+@pytest.mark.parametrize("goal", ["volume", "mass"])
+def test_a_limit_that_is_a_hair_below_its_steps_as_a_float(goal):
+    """Such as 0.000500003 m³: times 1e9 it falls short of 500003 mm³, and still allows them."""
+    beside, scale = (10**5, 10**9) if goal == "volume" else (10**6, 10**6)
+    total = next(t for t in range(11 * beside // 10, 10**7) if t / scale * scale < t)
+    own = {"mass": 0.1, "volume": 5e-5, "size": None}
+    motor = make_motor(**own | {goal: (total - beside) / scale})
+    half = beside / 2 / scale
+    parts = {
+        "motors": (motor,), "drivers": (make_driver(**{goal: half}),),
+        "supplies": (make_supply(**{goal: half}),),
+    }  # fmt: skip
+    for minimise in ((goal,), ("cost",)):
+        for limit, exists in ((total, True), (total - 1, False)):
+            limits = Limits(step_rate=1e5, **{goal: limit / scale})
+            problem = make_problem(axes=(make_axis(),), limits=limits, minimise=minimise, **parts)
+            assert (agreed(problem).key is not None) == exists
+
+
 # -- stopped ----------------------------------------------------------------------------------
 
 
@@ -311,6 +330,28 @@ def test_a_bound_of_a_search_stopped_at_any_moment_is_none_too_high(seed, monkey
         if proved[-1]:
             break
     assert not proved[0]
+
+
+@pytest.mark.parametrize("beyond", [-2, -1, 0, 1, 2, 1000])
+def test_the_best_design_lies_about_the_first_guess_of_its_goal(beyond, monkeypatch):
+    """Two cheap motors for three axes; the third one's price puts the goal at the guess."""
+    scarce = [make_motor(f"scarce-{k}", price=euros(20), stock=1) for k in range(search.FEW)]
+    axes = tuple(make_axis(f"axis-{k}") for k in range(search.FEW + 1))
+    parts = {"drivers": (make_driver(),), "supplies": (make_supply(),)}
+
+    def problem(steps: int) -> Problem:
+        dear = make_motor("dear", price=euros(f"{20 + steps / 10_000:.4f}"))
+        return make_problem(axes=axes, motors=(*scarce, dear), **parts)
+
+    bounds = search._Search(problem(0), search.Deadline(None), lambda _: None).bounds
+    floor = min(cell.floor for cell in bounds.cells(0))
+    cheap = len(axes) * (20 + 30) + 40
+    wanted = int(floor * (1.0 + search.GUESS)) + beyond
+    best = agreed(problem(wanted - cheap * 10_000))
+    assert best.values == (wanted,)
+    monkeypatch.setattr(search, "Deadline", Countdown)
+    for moment in range(12):
+        within(search.choose(problem(wanted - cheap * 10_000), moment), best)
 
 
 @pytest.mark.parametrize("seconds", [0.0, 0.01, 0.03, 0.1, 0.2])
