@@ -387,10 +387,10 @@ class _Search:
             return
         for model in models:
             self.progress("confirming by the second solver")
-            if milp.minimise(model.model, {}).status != "infeasible":
-                raise WrongVerdict(
-                    "CP-SAT finds no design and HiGHS does not agree; no verdict is given"
-                )
+            second = milp.minimise(model.model, {}).status
+            if second != "infeasible":
+                said = "cannot confirm it" if second == "unknown" else "finds one"
+                raise WrongVerdict(f"CP-SAT finds no design, HiGHS {said}; no verdict is given")
         self.result.second_route = f"HiGHS on the same rows, {len(models)} models: infeasible"
         self._what_clashes(models)
 

@@ -20,6 +20,7 @@ from factory import (
 from selector.domain.machine import Limits, Load, Point, Problem, VoltageLimits
 from selector.domain.parts import AS_WOUND, VoltageRange
 from selector.domain.results import Design
+from selector.errors import WrongVerdict
 from selector.judge import judge
 from selector.search import choice as search
 from selector.search import milp
@@ -220,3 +221,13 @@ def test_a_supply_stronger_by_less_than_a_step_still_counts():
     best = best_design(problem)
     assert best.supply == "strong"
     assert told(design_of(choose(problem)))[2] == "strong"
+
+
+def test_a_verdict_that_the_second_route_denies_is_withheld(monkeypatch):
+    """The first solver falsified: it says infeasible of everything."""
+    from selector.search.cpsat import CpSat
+    from selector.search.model import Outcome
+
+    monkeypatch.setattr(CpSat, "minimise", lambda *_: Outcome("infeasible"))
+    with pytest.raises(WrongVerdict, match="HiGHS finds one"):
+        choose(make_problem())
