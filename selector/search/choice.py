@@ -32,6 +32,7 @@ Array = Any
 BATCH = 64  # rails judged at once
 GUESS = 0.10  # how far above the least bound the first goal is guessed, step by step
 FEW, FEW_RAILS = 2, 4  # options for each pair of prices, and rails, of a design to begin with
+PATIENT_ROWS = 200_000  # rows judged before a first design is sought in full
 DUST = 1.0  # a step of the goal, for float dust in bounds
 PATIENCE = 10  # steps before they double: a machine without any design must not take for ever
 Progress = Callable[[str], None]
@@ -176,7 +177,7 @@ class _Search:
         solved_to = np.full(len(rails), -np.inf)  # no design at or below, proved
         heap = [(self._key(rail, solved_to), rail) for rail in rails if self.cells[rail]]
         heapq.heapify(heap)
-        step, raises = GUESS, 0
+        step, raises, hurried = GUESS, 0, False
         guess = heap[0][0] * (1.0 + step) if heap else np.inf
         highest = len(self.tables) * float(self.bounds.pair_goal.max()) + float(
             self.bounds.feed_goal.max()
@@ -210,6 +211,9 @@ class _Search:
                     heapq.heappush(heap, (self._key(rail, solved_to), rail))
             if self.result.choice is None:
                 self._first_design([rail for _, rail in heapq.nsmallest(FEW_RAILS, heap)])
+            if self.result.choice is None and not hurried and self._tried() > PATIENT_ROWS:
+                hurried = True
+                self._hurry([rail for _, rail in sorted(heap)])
 
     def _key(self, rail: int, solved_to: Array) -> float:
         """What no design at a rail goes below: its bound, or what was solved without one."""
@@ -224,6 +228,21 @@ class _Search:
     def _check_time(self) -> None:
         if self.deadline.left() == 0.0:
             raise _StopSearch
+
+    def _tried(self) -> int:
+        return sum(table.tried for table in self.bounds.unique)
+
+    def _hurry(self, rails: list[int]) -> None:
+        """A long search without a design: judge a few nominal voltages in full and take one there.
+
+        Counted in rows and not in seconds, so that the same input takes the same way.
+        """
+        nominal = {f.rail for f in self.offers.feeds if not f.trimmed}
+        chosen = [rail for rail in rails if rail in nominal][:FEW_RAILS]
+        self._judge(chosen, np.inf)
+        for rail in chosen:
+            self.cells[rail] = self.bounds.cells(rail)
+        self._first_design(chosen)
 
     def _first_design(self, rails: list[int]) -> None:
         """A design to begin with, from the few best options at the rails of least bound."""
