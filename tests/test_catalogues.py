@@ -81,8 +81,8 @@ def test_there_is_enough_to_choose_from():
 def test_every_name_is_of_the_invented_families_and_its_own():
     scheme = (
         r"(wren|coot|ibis)-\d{2,3}[a-z](-brake)?"
-        r"|(sedge|rush|reed|flag)-\d{2,3}-\d{2,3}(-calm|-duo)?"
-        r"|(pond|mere|lode)-\d{2}-\d{2,4}"
+        r"|(sedge|rush|reed|flag)-[a-z]+(-calm|-duo)?"
+        r"|(pond|mere|lode)-[a-z]+"
     )
     names = [part.part for part in CATALOGUE.parts]
     assert len(set(names)) == len(names)
@@ -228,13 +228,10 @@ def test_a_brake_leaves_the_motor_as_it_is_and_adds_length_mass_price_and_inerti
 
 
 @pytest.mark.parametrize("driver", DRIVERS, ids=named)
-def test_a_drivers_name_tells_peak_current_voltage_and_kind(driver):
-    _, tenths, volts, *kind = driver.part.split("-")
-    assert driver.supply_voltage.max == int(volts)
+def test_a_drivers_name_tells_its_kind(driver):
+    _, _, *kind = driver.part.split("-")
     assert driver.active_damping == (kind == ["calm"])
     assert driver.channels == (2 if kind == ["duo"] else 1)
-    # An rms figure rounded to tenths lies a little below the peak that gives the name.
-    assert 0.97 * int(tenths) <= 10.0 * largest_stated(driver) <= int(tenths) + 1e-6
 
 
 @pytest.mark.parametrize("driver", DRIVERS, ids=named)
@@ -280,13 +277,6 @@ def test_for_every_motor_there_is_a_driver_of_its_rated_current():
 
 
 # --- supplies -----------------------------------------------------------------------------------
-
-
-@pytest.mark.parametrize("supply", SUPPLIES, ids=named)
-def test_a_supplys_name_tells_volts_and_watts(supply):
-    _, volts, watts = supply.part.split("-")
-    assert supply.voltage == int(volts)
-    assert supply.power == int(watts)
 
 
 def test_supplies_have_the_usual_voltages():
