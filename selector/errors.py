@@ -45,13 +45,6 @@ class InputFaults(SelectorError):
         )
 
 
-class Stopped(SelectorError):
-    """A limit or the user stopped the search before any design was known."""
-
-    exit_code = 3
-    name = "stopped"
-
-
 class WrongVerdict(SelectorError):
     """Two routes that must agree do not; the answer is withheld."""
 

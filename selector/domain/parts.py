@@ -7,6 +7,7 @@ answer lists every figure so filled.
 from __future__ import annotations
 
 import itertools
+import math
 import re
 from decimal import Decimal
 from typing import Annotated, Any, Literal
@@ -61,7 +62,6 @@ DAMPING_PASSIVE, DAMPING_ACTIVE = 0.08, 0.15  # guess
 REGULATOR_TIME, REGULATOR_TIME_FAST = 30e-6, 20e-6  # s: simulated kinds of regulator
 
 AS_WOUND = "as wound"
-JOININGS = ("series", "parallel")
 
 
 class VoltageRange(Record):
@@ -312,7 +312,7 @@ class Driver(Part):
             fast = self.off_time <= REGULATOR_TIME_FAST
             return REGULATOR_TIME_FAST if fast else max(REGULATOR_TIME, self.off_time)
         if self.current_loop_bandwidth is not None:
-            return max(REGULATOR_TIME, 1.0 / (6.283185307179586 * self.current_loop_bandwidth))
+            return max(REGULATOR_TIME, 1.0 / (2.0 * math.pi * self.current_loop_bandwidth))
         return REGULATOR_TIME
 
     @property

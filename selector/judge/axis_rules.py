@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 
 from ..domain.results import Finding, Quantity, Standing, State
-from ..physics import power, thermal, torque
+from ..physics import power, supply, thermal, torque
 from .cases import AxisCase
 
 CLOSE = 1e-9  # relative: float dust only
@@ -133,10 +134,8 @@ def current_setting(case: AxisCase) -> Findings:
 
 
 def _driver_share(case: AxisCase) -> float:
-    from ..physics.supply import derated_share
-
     steps = [(step.at, step.share) for step in case.driver.derating]
-    return derated_share(case.machine.ambient, steps, case.driver.max_ambient)
+    return supply.derated_share(case.machine.ambient, steps, case.driver.max_ambient)
 
 
 def rest_current(case: AxisCase) -> Findings:
@@ -346,7 +345,7 @@ def torque_headroom(case: AxisCase) -> Findings:
         worst.required,
         "N*m",
         "simulated",
-        f"at {worst.speed * 30 / 3.141592653589793:.0f} rpm",
+        f"at {worst.speed * 30 / math.pi:.0f} rpm",
         least,
     )
     if worst.stalled:

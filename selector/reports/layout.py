@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import math
 import os
 from collections.abc import Iterable, Sequence
 from typing import TextIO
@@ -16,7 +17,7 @@ from rich.text import Text
 from ..domain.results import Quantity
 
 WIDTH = 100
-RPM = 30 / 3.141592653589793
+RPM = 30 / math.pi
 
 
 class Page:
